@@ -1,0 +1,51 @@
+#pragma once
+
+/// \file quadrature.hpp
+/// Nodes and weights for the integral of the hazard: dense where the hazard is, coarse elsewhere
+/// (weighted-Poisson quadrature, Berman & Turner 1992, Appl. Stat. 41:31).
+
+#include <cstddef>
+#include <vector>
+
+#include "estimator/fit/columns.hpp"
+#include "estimator/fit/exposure.hpp"
+
+namespace softsill {
+
+/// Gauss-Legendre rule of one cell.
+enum class CellRule : unsigned char { midpoint = 1, two_point = 2 };
+
+struct Cell {
+  double begin_ms, end_ms;
+  CellRule rule;
+};
+
+/// Cells of one sweep, sorted and disjoint.
+using SweepCells = std::vector<Cell>;
+
+struct NodeSet {
+  std::vector<SweepCells> cells;              ///< one entry per sweep of the exposure
+  std::vector<std::vector<double>> times_ms;  ///< nodes of each sweep, sorted
+  std::vector<double> weights_ms;             ///< of all nodes, sweeps one after the other
+  std::size_t size() const { return weights_ms.size(); }
+};
+
+/// Cells no longer than `longest_ms`, graded finer after each spike where history kernels are
+/// steep.
+std::vector<SweepCells> graded_cells(const Exposure& exposure, double longest_ms, CellRule rule);
+
+/// Places the nodes of given cells.
+NodeSet place_nodes(std::vector<SweepCells> cells);
+
+/// Cells for the next fit, from the linear predictor x of a pilot fit at the midpoints of
+/// `pilot.cells` (all of CellRule::midpoint): a cell is split so that x changes by at most
+/// `largest_change` within a part, and kept as one midpoint where it holds less than
+/// `negligible_spikes` expected spikes even at its neighbours' hazard.
+/// \param predictor log hazard (1/ms) at the pilot's nodes
+std::vector<SweepCells> refined_cells(const NodeSet& pilot, const Vector& predictor,
+                                      double largest_change, double negligible_spikes);
+
+/// Every cell cut into two halves of the same rule.
+std::vector<SweepCells> halved_cells(const std::vector<SweepCells>& cells);
+
+}  // namespace softsill
