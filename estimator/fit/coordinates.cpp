@@ -229,6 +229,12 @@ double Coordinates::coordinate_of(std::size_t coordinate, double time_constant_m
   return std::log(share / (1.0 - share));
 }
 
+double Coordinates::log_slope(std::size_t coordinate, double value) const {
+  const TauRange& range = range_of(coordinate);
+  const double s = sigmoid(value);
+  return std::log(range.longest / range.shortest) * s * (1.0 - s);
+}
+
 bool Coordinates::at_edge(std::size_t coordinate, double value) const {
   return is_time_constant(coordinate) && std::abs(value) > edge_logit;
 }
@@ -332,9 +338,7 @@ Mapped Coordinates::map(const Vector& theta) const {
           part.tau_index.empty() ? -1 : part.tau_index[static_cast<std::size_t>(j)];
       double slope = 0.0;  // d log tau / d coordinate
       if (tau >= 0) {
-        const TauRange& range = range_of(static_cast<std::size_t>(tau));
-        const double s = sigmoid(theta[tau]);
-        slope = std::log(range.longest / range.shortest) * s * (1.0 - s);
+        slope = log_slope(static_cast<std::size_t>(tau), theta[tau]);
       }
       m.beta[spike_first + j] += factor * amplitude;
       m.beta_jacobian(spike_first + j, at) += factor;
@@ -395,10 +399,8 @@ void Coordinates::add_curvature(const Vector& theta, const Vector& beta_weight,
       if (tau < 0) {
         continue;
       }
-      const TauRange& range = range_of(static_cast<std::size_t>(tau));
-      const double s = sigmoid(theta[tau]);
-      const double slope = std::log(range.longest / range.shortest) * s * (1.0 - s);
-      const double bend = slope * (1.0 - 2.0 * s);
+      const double slope = log_slope(static_cast<std::size_t>(tau), theta[tau]);
+      const double bend = slope * (1.0 - 2.0 * sigmoid(theta[tau]));
       // Columns of first and second derivatives by log tau carry the expansion
       // a (phi + phi' d + phi'' d^2 / 2), d = slope dz + bend dz^2 / 2.
       const double first = beta_weight[spike_first + n + j];

@@ -74,6 +74,8 @@ class Coordinates {
   /// plan's bounds on the log scale, so that no bound has to be handed to the optimiser.
   double time_constant(std::size_t coordinate, double value) const;
   double coordinate_of(std::size_t coordinate, double time_constant_ms) const;
+  /// d log(time constant) / d coordinate.
+  double log_slope(std::size_t coordinate, double value) const;
   bool at_edge(std::size_t coordinate, double value) const;
   bool is_time_constant(std::size_t coordinate) const;
 
