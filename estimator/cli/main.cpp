@@ -23,8 +23,8 @@ std::string as_typed(int argc, char** argv) {
   std::string line;
   for (int i = 0; i < argc; ++i) {
     const std::string word = i == 0 ? "softsill" : argv[i];
-    const bool plain = !word.empty() && word.find_first_of(" \t\n'\"\\$&|;<>()*?[]#~`!{}") ==
-                                            std::string::npos;
+    const bool plain =
+        !word.empty() && word.find_first_of(" \t\n'\"\\$&|;<>()*?[]#~`!{}") == std::string::npos;
     line += i == 0 ? "" : " ";
     if (plain) {
       line += word;
@@ -92,7 +92,8 @@ std::string usage_message(CLI::App& program, const CLI::ParseError& error) {
           }
         }
         const std::string typed = word.substr(0, word.find('='));
-        return "unknown option '" + typed + "'; the nearest is " + nearest_word(typed, options) + see;
+        return "unknown option '" + typed + "'; the nearest is " + nearest_word(typed, options) +
+               see;
       }
       return "unexpected argument '" + word + "'" + see;
     }
@@ -119,7 +120,8 @@ int run_program(int argc, char** argv) {
   program.fallthrough();
   program.require_subcommand(0, 1);
   program.set_help_flag("-h,--help", "Print this help and leave");
-  program.set_version_flag("--version", "softsill " SOFTSILL_VERSION, "Print the version and leave");
+  program.set_version_flag("--version", "softsill " SOFTSILL_VERSION,
+                           "Print the version and leave");
   program.add_flag("-q,--quiet", session.quiet, "Errors only")->group("Everywhere");
   program.add_flag("--json", session.json, "Results on stdout as one JSON document")
       ->group("Everywhere");
@@ -127,7 +129,8 @@ int run_program(int argc, char** argv) {
   add_fit(program, session);
   add_simulate(program, session);
   program.footer(
-      "Exit status: 0 done, 1 data or file error, 2 usage, 3 finished but the estimate is not to be\n"
+      "Exit status: 0 done, 1 data or file error, 2 usage, 3 finished but the estimate is not to "
+      "be\n"
       "trusted, 130 interrupted.\n\n"
       "Example:\n  softsill check cell.toml && softsill fit cell.toml --out fitted\n\n"
       "For research. Not a medical device, and no basis for stimulating people.");
