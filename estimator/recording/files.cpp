@@ -1,19 +1,17 @@
 #include "softsill/files.hpp"
 
 #include <fcntl.h>
-#include <openssl/evp.h>
-#include <sys/stat.h>
 #include <unistd.h>
 
 #include <array>
+#include <atomic>
 #include <cerrno>
-#include <cstdio>
 #include <cstring>
 #include <filesystem>
-#include <memory>
 #include <vector>
 
 #include "estimator/recording/file_handle.hpp"
+#include "estimator/recording/sha256.hpp"
 #include "softsill/error.hpp"
 
 namespace softsill {
@@ -49,9 +47,11 @@ std::string read_text_file(const std::string& path, std::size_t limit_bytes) {
 }
 
 void write_file_atomically(const std::string& path, std::string_view text) {
-  // The name is free by construction (mkstemp), so that two runs cannot write into one another.
-  std::string beside = path + ".XXXXXX";
-  const int descriptor = ::mkstemp(beside.data());
+  // O_EXCL and a name of our own: two runs cannot write into one another's file.
+  static std::atomic<unsigned> serial{0};
+  const std::string beside =
+      path + ".part-" + std::to_string(::getpid()) + "-" + std::to_string(serial.fetch_add(1));
+  const int descriptor = ::open(beside.c_str(), O_WRONLY | O_CREAT | O_EXCL | O_CLOEXEC, 0666);
   if (descriptor < 0) {
     throw Error(path, "", std::string("cannot be written: ") + std::strerror(errno),
                 "check that the folder exists and may be written to");
@@ -75,10 +75,7 @@ void write_file_atomically(const std::string& path, std::string_view text) {
     next += put;
     left -= static_cast<std::size_t>(put);
   }
-  // mkstemp makes a private file; the result gets the permissions any new file would have.
-  const mode_t mask = ::umask(0);
-  ::umask(mask);
-  if (::fchmod(descriptor, 0666 & ~mask) != 0 || ::fsync(descriptor) != 0) {
+  if (::fsync(descriptor) != 0) {
     give_up(errno);
   }
   if (::rename(beside.c_str(), path.c_str()) != 0) {
@@ -98,33 +95,15 @@ void write_file_atomically(const std::string& path, std::string_view text) {
 
 std::string sha256_of_file(const std::string& path) {
   const FileHandle file = FileHandle::open_for_reading(path);
-  const std::unique_ptr<EVP_MD_CTX, decltype(&EVP_MD_CTX_free)> context(EVP_MD_CTX_new(),
-                                                                        &EVP_MD_CTX_free);
-  if (!context || EVP_DigestInit_ex(context.get(), EVP_sha256(), nullptr) != 1) {
-    throw InternalError("SHA-256 is not available from the crypto library");
-  }
+  Sha256 hash;
   std::vector<char> piece(std::size_t{1} << 20);
   for (;;) {
     const std::size_t got = file.read(piece.data(), piece.size());
     if (got == 0) {
-      break;
+      return hash.finish();
     }
-    if (EVP_DigestUpdate(context.get(), piece.data(), got) != 1) {
-      throw InternalError("the crypto library refused to hash");
-    }
+    hash.add(piece.data(), got);
   }
-  std::array<unsigned char, EVP_MAX_MD_SIZE> digest;
-  unsigned int length = 0;
-  if (EVP_DigestFinal_ex(context.get(), digest.data(), &length) != 1) {
-    throw InternalError("the crypto library refused to finish a hash");
-  }
-  constexpr char digits[] = "0123456789abcdef";
-  std::string text;
-  for (unsigned int i = 0; i < length; ++i) {
-    text += digits[digest[i] >> 4];
-    text += digits[digest[i] & 15];
-  }
-  return text;
 }
 
 }  // namespace softsill

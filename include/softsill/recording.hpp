@@ -29,15 +29,15 @@ enum class SpikeOrigin { given, detected };
 /// All times are on the clock of the file's time column.
 struct Sweep {
   std::string name;
-  double start_ms = 0.0;               ///< time of the first sample
-  double step_ms = 0.0;                ///< sampling interval
-  std::vector<double> input;           ///< nA, or the sheet's input_unit
-  std::vector<double> voltage_mV;      ///< empty when not recorded
-  std::vector<double> spikes_ms;       ///< strictly increasing, inside the sweep
+  double start_ms = 0.0;           ///< time of the first sample
+  double step_ms = 0.0;            ///< sampling interval
+  std::vector<double> input;       ///< nA, or the sheet's input_unit
+  std::vector<double> voltage_mV;  ///< empty when not recorded
+  std::vector<double> spikes_ms;   ///< strictly increasing, inside the sweep
   SpikeOrigin spike_origin = SpikeOrigin::given;
   Use use = Use::estimate;
-  std::string repeats;                 ///< label shared by sweeps with one injected current
-  std::vector<Interval> analysed;      ///< sorted, disjoint: the window minus the exclusions
+  std::string repeats;             ///< label shared by sweeps with one injected current
+  std::vector<Interval> analysed;  ///< sorted, disjoint: the window minus the exclusions
 
   double end_ms() const { return start_ms + step_ms * static_cast<double>(input.size()); }
   double duration_ms() const { return step_ms * static_cast<double>(input.size()); }
@@ -46,8 +46,8 @@ struct Sweep {
 
 /// What the sheet says about uncompensated series resistance (adds R_s I to the potential).
 struct SeriesResistance {
-  bool fit = false;          ///< estimate it as a free parameter
-  double value_MOhm = 0.0;   ///< subtracted when not fitted
+  bool fit = false;         ///< estimate it as a free parameter
+  double value_MOhm = 0.0;  ///< subtracted when not fitted
 };
 
 /// A file that went into a result, for the provenance block.
@@ -58,12 +58,13 @@ struct InputFile {
 
 /// One cell.
 struct Recording {
-  std::string cell;                  ///< free text
-  std::string input_unit = "nA";     ///< "nA" when the input is a current
-  bool input_is_current = true;      ///< false: a sound's envelope, light, ...
+  std::string cell;               ///< free text
+  std::string input_unit = "nA";  ///< "nA" when the input is a current
+  bool input_is_current = true;   ///< false: a sound's envelope, light, ...
   SeriesResistance series_resistance;
   std::vector<Sweep> sweeps;
-  std::vector<InputFile> files;      ///< the sheet and every file it names
+  std::string spike_detection;   ///< how spikes were found, in words; empty: all were given
+  std::vector<InputFile> files;  ///< the sheet and every file it names
 
   /// True when every sweep that a fit may see carries the membrane potential.
   bool has_voltage() const;
