@@ -26,7 +26,9 @@ enum class EscapeKind {
 struct Escape {
   EscapeKind kind = EscapeKind::exponential;
   double lambda_0_per_ms = 1.0;  ///< rate scale, 1/ms; for `logistic` the ceiling rate
-  double exponent = 1.0;         ///< n of `rectified_power`; ignored by the others
+  double exponent = 1.0;         ///< n of `rectified_power`, at most 50; ignored by the others
+
+  bool operator==(const Escape&) const = default;
 };
 
 /// Value and derivatives of lambda(x) and log lambda(x). The own parameters are
