@@ -23,6 +23,7 @@ struct CellFit {
   std::unique_ptr<CellObjective> likelihood;
   std::unique_ptr<Penalised> penalised;
   Minimum minimum;
+  std::vector<Penalty> pilot_penalties;   ///< as the spikes-alone pilot left them
   std::vector<bool> fixed;  ///< coordinates held at an edge
   double log_marginal = 0.0;
   bool smoothing_settled = true;

@@ -86,6 +86,9 @@ double newton_decrement(const Evaluated& here) {
   return 0.5 * here.gradient.dot(factor.solve(here.gradient));
 }
 
+/// What rounding leaves of a decrement: the sums behind a value carry some 1e-15 of it.
+double reachable(double asked, double value) { return asked + 1e-14 * std::abs(value); }
+
 class TrustRegionCost : public ceres::CostFunction {
  public:
   TrustRegionCost(const Reduced& problem, double floor) : problem_(problem), floor_(floor) {
@@ -114,16 +117,18 @@ class TrustRegionCost : public ceres::CostFunction {
       jacobian.row(0) = here.gradient.transpose() / first;
       jacobian.bottomRows(n) = positive_factor(problem_, at, here).transpose();
       decrement_ = newton_decrement(here);
+      value_ = here.value;
     }
     return true;
   }
 
-  double decrement() const { return decrement_; }
+  bool done(double asked) const { return decrement_ < reachable(asked, value_); }
 
  private:
   const Reduced& problem_;
   double floor_;
   mutable double decrement_ = std::numeric_limits<double>::infinity();
+  mutable double value_ = 0.0;
 };
 
 class StopWhenDone : public ceres::IterationCallback {
@@ -135,8 +140,8 @@ class StopWhenDone : public ceres::IterationCallback {
       interrupted = true;
       return ceres::SOLVER_ABORT;
     }
-    return cost_.decrement() < options_.decrement ? ceres::SOLVER_TERMINATE_SUCCESSFULLY
-                                                  : ceres::SOLVER_CONTINUE;
+    return cost_.done(options_.decrement) ? ceres::SOLVER_TERMINATE_SUCCESSFULLY
+                                          : ceres::SOLVER_CONTINUE;
   }
   bool interrupted = false;
 
@@ -149,7 +154,7 @@ class StopWhenDone : public ceres::IterationCallback {
 void polish(const Reduced& problem, double target, Vector& at, Evaluated& here) {
   for (int step = 0; step < 5; ++step) {
     const Eigen::LLT<Matrix> factor(here.hessian);
-    if (factor.info() != Eigen::Success || newton_decrement(here) < target) {
+    if (factor.info() != Eigen::Success || newton_decrement(here) < reachable(target, here.value)) {
       return;
     }
     const Vector direction = -factor.solve(here.gradient);
@@ -186,7 +191,7 @@ Minimum minimize(Objective& objective, const Vector& start, const MinimizerOptio
     return out;
   }
   const double decrement = newton_decrement(here);
-  if (problem.size() > 0 && !(decrement < options.decrement)) {
+  if (problem.size() > 0 && !(decrement < reachable(options.decrement, here.value))) {
     // Far enough below that the rank-one term stays small, near enough to keep the digits.
     const double gap = std::isfinite(decrement) ? decrement : 0.0;
     const double floor = here.value - 1e5 - 1e2 * std::min(gap, 1e6);

@@ -15,7 +15,8 @@ struct MinimizerOptions {
   int max_iterations = 200;
   /// Stop once the Newton decrement (nats) is below this: the gap to the optimum, in
   /// log-likelihood.
-  double decrement = 1e-10;
+  /// Rounding of a large likelihood is allowed for on top.
+  double decrement = 1e-9;
   /// Coordinates held at their start; empty: none.
   std::vector<bool> fixed;
   /// Called after every iteration; false stops with `interrupted`.

@@ -142,9 +142,12 @@ void check_kappa(CellFit& fit, Estimate& estimate) {
   const Eigen::Index p = spikes.size();
 
   // Smoothing of the spikes' own kernels, kappa free: also the curve to show.
-  const double b = std::exp(fit.minimum.theta[fit.coordinates().index("log_b")]);
+  const double b = fit.minimum.theta[fit.coordinates().index("b")];
   Vector start = Vector::Zero(p);
   const Mapped joint = fit.coordinates().map(fit.minimum.theta);
+  if (joint.beta.size() == p) {
+    start = joint.beta;  // same columns: after-spike kernels included
+  }
   start[0] = joint.beta[0];
   start.segment(first, n) = b * voltage.kappa;
   const Matrix information = spikes.evaluate(start, Want::derivatives_and_expected).expected;
@@ -156,6 +159,13 @@ void check_kappa(CellFit& fit, Estimate& estimate) {
       const auto size = static_cast<Eigen::Index>(part.size());
       penalties.back().lambda =
           1e-2 * information.block(at, at, size, size).trace() / penalties.back().matrix.trace();
+    }
+  }
+  for (Penalty& penalty : penalties) {
+    for (const Penalty& from : fit.pilot_penalties) {
+      if (from.name == penalty.name && from.matrix.rows() == penalty.matrix.rows()) {
+        penalty.lambda = from.lambda;
+      }
     }
   }
   Penalised penalised(spikes, penalties);
@@ -180,8 +190,8 @@ void check_kappa(CellFit& fit, Estimate& estimate) {
     }
   }
   LinearView null(penalised, map);
-  Vector phi = Vector::Zero(map.cols());
-  phi[0] = start[0];
+  // Everything but kappa starts where the free fit ended; kappa where the joint fit has it.
+  Vector phi = map.transpose() * free.minimum.theta;
   phi[first] = b;
   const Minimum at_null = minimize(null, phi, options.minimizer);
   if (!at_null.passed()) {

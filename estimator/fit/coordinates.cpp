@@ -159,7 +159,7 @@ Coordinates::Coordinates(const Variant& variant, bool joint, bool fit_series_res
     add_name("E_0");
     add_part("kappa", variant.kappa, Scale::times_b, true, false);
     add_part("eta", variant.eta, Scale::times_b, true, false);
-    add_name("log_b");
+    add_name("b");
     add_name("theta_0/Delta");
     const bool share =
         variant.eta.family != KernelFamily::absent && same_columns(variant.eta, variant.theta_1);
@@ -302,13 +302,13 @@ Mapped Coordinates::map(const Vector& theta) const {
     m.escape.exponent = std::exp(theta[at]);
     m.beta_jacobian(q + 1, at) = 1.0;
   }
-  const std::ptrdiff_t log_b = index("log_b");
-  const double b = joint_ ? std::exp(theta[log_b]) : 1.0;
+  const std::ptrdiff_t b_index = index("b");
+  const double b = joint_ ? theta[b_index] : 1.0;
   if (joint_) {
     const std::ptrdiff_t threshold = index("theta_0/Delta");
     m.beta[0] = b * theta[0] - theta[threshold];
     m.beta_jacobian(0, 0) = b;
-    m.beta_jacobian(0, log_b) = b * theta[0];
+    m.beta_jacobian(0, b_index) = theta[0];
     m.beta_jacobian(0, threshold) = -1.0;
     m.v[0] = theta[0];
     m.v_jacobian(0, 0) = 1.0;
@@ -343,7 +343,7 @@ Mapped Coordinates::map(const Vector& theta) const {
       m.beta[spike_first + j] += factor * amplitude;
       m.beta_jacobian(spike_first + j, at) += factor;
       if (scaled) {
-        m.beta_jacobian(spike_first + j, log_b) += factor * amplitude;
+        m.beta_jacobian(spike_first + j, b_index) += amplitude;
       }
       if (tau >= 0) {
         m.beta_jacobian(spike_first + n + j, tau) += factor * amplitude * slope;
@@ -370,11 +370,10 @@ void Coordinates::add_curvature(const Vector& theta, const Vector& beta_weight,
       hessian(j, i) += value;
     }
   };
-  const std::ptrdiff_t log_b = index("log_b");
-  const double b = joint_ ? std::exp(theta[log_b]) : 1.0;
+  const std::ptrdiff_t b_index = index("b");
+  const double b = joint_ ? theta[b_index] : 1.0;
   if (joint_) {
-    add(0, log_b, beta_weight[0] * b);
-    add(log_b, log_b, beta_weight[0] * b * theta[0]);
+    add(0, b_index, beta_weight[0]);
   }
   for (const KernelPart& part : parts_) {
     const auto n = static_cast<Eigen::Index>(part.size());
@@ -391,8 +390,7 @@ void Coordinates::add_curvature(const Vector& theta, const Vector& beta_weight,
       const auto at = static_cast<Eigen::Index>(part.first) + j;
       const double amplitude = theta[at];
       if (scaled) {
-        add(log_b, at, beta_weight[spike_first + j] * b);
-        add(log_b, log_b, beta_weight[spike_first + j] * b * amplitude);
+        add(b_index, at, beta_weight[spike_first + j]);
       }
       const std::ptrdiff_t tau =
           part.tau_index.empty() ? -1 : part.tau_index[static_cast<std::size_t>(j)];
@@ -407,7 +405,7 @@ void Coordinates::add_curvature(const Vector& theta, const Vector& beta_weight,
       const double second = beta_weight[spike_first + 2 * n + j];
       add(at, tau, first * factor * slope);
       if (scaled) {
-        add(log_b, tau, first * factor * amplitude * slope);
+        add(b_index, tau, first * amplitude * slope);
       }
       add(tau, tau, factor * amplitude * (first * bend + second * slope * slope));
       if (part.voltage_block >= 0) {

@@ -7,7 +7,7 @@
 /// Spikes and voltage (mV, b = 1 / Delta, reference potential subtracted from E_0 and theta_0):
 ///   x = b (E_0 + kappa * I + sum eta) - theta_0 / Delta - sum theta_1 / Delta
 ///   V = E_0 + kappa * I + sum eta + R_s I
-/// so theta = (E_0, kappa, eta, log b, theta_0 / Delta, theta_1 / Delta, R_s, log sigma, atanh
+/// so theta = (E_0, kappa, eta, b, theta_0 / Delta, theta_1 / Delta, R_s, log sigma, atanh
 /// rho). Spikes alone: theta = beta = ((E_0 - theta_0) / Delta, kappa / Delta, (eta - theta_1) /
 /// Delta). Then the escape function's own (log lambda_0, log n) and one coordinate per free time
 /// constant.

@@ -249,20 +249,19 @@ void describe_noise_level(CellFit& fit, const Reading& reading, double z, Estima
     estimate.parameters.push_back({"noise_level", estimate.noise_level});
     return;
   }
-  const std::ptrdiff_t log_b = fit.coordinates().index("log_b");
-  const ProfileInterval profile =
-      profile_interval(*fit.penalised, fit.minimum, fit.covariance, log_b, fit.options->level,
-                       fit.minimizer_options());
+  const std::ptrdiff_t b = fit.coordinates().index("b");
+  const ProfileInterval profile = profile_interval(*fit.penalised, fit.minimum, fit.covariance, b,
+                                                   fit.options->level, fit.minimizer_options());
   Quantity quantity;
   quantity.value = delta.value;
   quantity.unit = "mV";
   quantity.method = "profile likelihood";
   // b = 1 / Delta: ends change places.
   if (profile.high) {
-    quantity.low = std::exp(-*profile.high);
+    quantity.low = 1.0 / *profile.high;
   }
-  if (profile.low) {
-    quantity.high = std::exp(-*profile.low);
+  if (profile.low && *profile.low > 0.0) {
+    quantity.high = 1.0 / *profile.low;  // otherwise the data allow any softness
   }
   estimate.noise_level = quantity;
   estimate.parameters.push_back({"noise_level", quantity});

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <numeric>
 
 #include "estimator/fit/cell_fit.hpp"
 #include "estimator/fit/parallel.hpp"
@@ -15,7 +16,6 @@ namespace {
 
 constexpr double pilot_cell_ms = 2.0;
 constexpr double change_per_cell = 1.0;          // of log hazard within one two-point cell
-constexpr double negligible_per_spike = 1e-6;    // expected spikes in a coarse cell, per spike
 constexpr double allowed_integral_error = 0.02;  // times sqrt(spikes)
 constexpr double allowed_shift = 0.05;           // standard errors
 constexpr int most_refinements = 4;
@@ -78,6 +78,22 @@ std::vector<Penalty> penalties_for(const Coordinates& coordinates, const Matrix&
   return penalties;
 }
 
+/// The pilot's smoothing is a better start than a guess. Its kappa is kappa / Delta.
+void take_pilot_smoothing(const std::vector<Penalty>& pilot, const Coordinates& coordinates,
+                          const Vector& start, std::vector<Penalty>& penalties) {
+  const double b = coordinates.joint() ? start[coordinates.index("b")] : 1.0;
+  for (Penalty& penalty : penalties) {
+    for (const Penalty& from : pilot) {
+      const bool history = from.name == "eta_minus_theta_1" && penalty.name != "kappa";
+      if (from.matrix.rows() == penalty.matrix.rows() && from.chosen &&
+          (from.name == penalty.name || history)) {
+        // Coefficients in mV are b times smaller in units of Delta.
+        penalty.lambda = from.lambda * (penalty.name == "theta_1" ? 1.0 : b * b);
+      }
+    }
+  }
+}
+
 void set_given_smoothing(const SmoothingPlan& plan, std::vector<Penalty>& penalties) {
   for (Penalty& penalty : penalties) {
     penalty.chosen = plan.automatic;
@@ -125,6 +141,7 @@ int bound_separated_columns(const CellObjective& objective, std::vector<Penalty>
 struct Pilot {
   std::unique_ptr<CellObjective> objective;
   Minimum minimum;
+  std::vector<Penalty> penalties;
   Vector at_nodes, at_spikes;  ///< log hazard
 };
 
@@ -151,6 +168,7 @@ Pilot run_pilot(const Variant& variant, const Exposure& exposure, int threads, P
   options.minimizer.decrement = 1e-3;  // a pilot needs no more
   options.minimizer.keep_going = [&] { return progress.keep_going(); };
   pilot.minimum = choose_smoothing(penalised, start, options).minimum;
+  pilot.penalties = penalised.penalties();
   progress.tick();
   const Mapped mapped = pilot.objective->coordinates().map(pilot.minimum.theta);
   pilot.at_nodes = pilot.objective->design().nodes * mapped.beta;
@@ -168,7 +186,9 @@ Vector scattered_start(const Coordinates& coordinates, const Vector& best, std::
     const auto at = static_cast<Eigen::Index>(i);
     if (coordinates.is_time_constant(i)) {
       theta[at] = coordinates.neutral_start()[at] + 1.0 * random.normal();
-    } else if (name == "log_b" || name == "log_lambda_0" || name == "log_exponent") {
+    } else if (name == "b") {
+      theta[at] *= std::exp(0.5 * random.normal());
+    } else if (name == "log_lambda_0" || name == "log_exponent") {
       theta[at] += 0.5 * random.normal();
     }
   }
@@ -226,33 +246,80 @@ void try_starts(CellFit& fit, Progress& progress) {
       }));
 }
 
-/// Error of the present nodes, against cells of half the length.
-NodeError measure_nodes(CellFit& fit) {
+/// Measured error of the present nodes, and which cells carry it.
+struct NodeCheck {
+  NodeError error;
+  std::vector<double> cell_difference;  ///< expected spikes, finer minus present
+};
+
+Vector rates_at(const SpikeDesign& design, const Mapped& m) {
+  Vector rate = design.nodes * m.beta;
+  for (double& x : rate) {
+    x = escape_rate(m.escape, x);
+  }
+  return rate;
+}
+
+/// Compares the nodes with finer ones everywhere, at the present estimate.
+NodeCheck check_nodes(CellFit& fit) {
   CellObjective& likelihood = *fit.likelihood;
   const Mapped m = likelihood.coordinates().map(fit.minimum.theta);
   NodePlan plan = likelihood.plan();
-  const std::size_t nodes = plan.nodes.size();
-  plan.nodes = place_nodes(halved_cells(plan.nodes.cells));
+  plan.nodes = place_nodes(finer_cells(plan.nodes.cells));
   const SpikeDesign finer =
       make_design(likelihood.coordinates().spike_columns(), plan, likelihood.threads());
-  auto at = [&](const SpikeDesign& design) {
-    return evaluate_spikes(design, m.escape, m.beta, Want::derivatives, likelihood.threads());
-  };
-  const SpikeEvaluation coarse = at(likelihood.design()), fine = at(finer);
-  NodeError error;
-  error.nodes = nodes;
-  // Same spikes in both, so the difference is the integral's.
-  error.expected_spikes_error = std::abs(coarse.log_likelihood - fine.log_likelihood);
-  error.allowed = allowed_integral_error * std::sqrt(static_cast<double>(fit.exposure.spikes));
-  const Vector shift =
-      fit.covariance * (m.beta_jacobian.transpose() * (fine.gradient - coarse.gradient));
-  for (Eigen::Index i = 0; i < shift.size(); ++i) {
-    if (fit.covariance(i, i) > 0.0) {
-      error.largest_shift_in_se =
-          std::max(error.largest_shift_in_se, std::abs(shift[i]) / std::sqrt(fit.covariance(i, i)));
+  const Vector coarse_rate = rates_at(likelihood.design(), m), fine_rate = rates_at(finer, m);
+  const std::vector<double> coarse = cell_integrals(likelihood.plan().nodes, coarse_rate);
+  const std::vector<double> fine = cell_integrals(plan.nodes, fine_rate);
+  NodeCheck check;
+  check.cell_difference = coarse;
+  std::size_t part = 0, index = 0;
+  double total = 0.0;
+  for (const SweepCells& sweep : likelihood.plan().nodes.cells) {
+    for (const Cell& cell : sweep) {
+      double sum = fine[part++];
+      if (cell.rule == CellRule::two_point) {
+        sum += fine[part++];
+      }
+      check.cell_difference[index] = sum - coarse[index];
+      total += check.cell_difference[index++];
     }
   }
-  return error;
+  check.error.nodes = likelihood.plan().nodes.size();
+  check.error.expected_spikes_error = std::abs(total);
+  check.error.allowed =
+      allowed_integral_error * std::sqrt(static_cast<double>(fit.exposure.spikes));
+  // The same spikes are in both, so scores differ by the integrals' derivatives alone.
+  auto score = [&](const SpikeDesign& design) {
+    return evaluate_spikes(design, m.escape, m.beta, Want::gradient, likelihood.threads()).gradient;
+  };
+  const Vector shift =
+      fit.covariance * (m.beta_jacobian.transpose() * (score(finer) - score(likelihood.design())));
+  for (Eigen::Index i = 0; i < shift.size(); ++i) {
+    if (fit.covariance(i, i) > 0.0) {
+      check.error.largest_shift_in_se = std::max(
+          check.error.largest_shift_in_se, std::abs(shift[i]) / std::sqrt(fit.covariance(i, i)));
+    }
+  }
+  return check;
+}
+
+/// The cells with the largest errors, so that the rest together stays far below what is allowed.
+std::vector<bool> worst_cells(const NodeCheck& check) {
+  const std::size_t n = check.cell_difference.size();
+  std::vector<std::size_t> order(n);
+  std::iota(order.begin(), order.end(), std::size_t{0});
+  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) {
+    return std::abs(check.cell_difference[a]) < std::abs(check.cell_difference[b]);
+  });
+  std::vector<bool> chosen(n, false);
+  double kept = 0.0;
+  for (std::size_t i = 0; i < n; ++i) {
+    kept += std::abs(check.cell_difference[order[i]]);
+    // At least the worst eighth goes, for errors of the score that cancel in the integral.
+    chosen[order[i]] = kept > 0.2 * check.error.allowed || i >= n - n / 8;
+  }
+  return chosen;
 }
 
 /// Refines the nodes until their measured error is small, fitting again each time.
@@ -260,13 +327,15 @@ void settle_nodes(CellFit& fit, Progress& progress) {
   for (int round = 0;; ++round) {
     progress.tick();
     fit.covariance = inverse_information(fit.minimum.hessian, fit.fixed);
-    fit.node_error = measure_nodes(fit);
+    const NodeCheck check = check_nodes(fit);
+    fit.node_error = check.error;
     const bool good = fit.node_error.expected_spikes_error <= fit.node_error.allowed &&
                       fit.node_error.largest_shift_in_se <= allowed_shift;
     if (good || round == most_refinements) {
       return;
     }
-    fit.likelihood->set_nodes(place_nodes(halved_cells(fit.likelihood->plan().nodes.cells)));
+    fit.likelihood->set_nodes(
+        place_nodes(finer_cells(fit.likelihood->plan().nodes.cells, worst_cells(check))));
     fit.minimum = minimize(*fit.penalised, fit.minimum.theta, fit.minimizer_options());
     if (!fit.minimum.finite) {
       return;
@@ -348,11 +417,11 @@ void maximise(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progress& pro
     voltage_fit = fit_voltage(statistics, penalty);
   }
   progress.at(0.3, "placing nodes");
-  const double negligible = negligible_per_spike * static_cast<double>(fit.exposure.spikes);
-  NodePlan plan{&fit.exposure,
-                place_nodes(refined_cells(pilot.objective->plan().nodes, pilot.at_nodes,
-                                          change_per_cell, negligible)),
-                block_ms};
+  NodePlan plan{
+      &fit.exposure,
+      place_nodes(refined_cells(pilot.objective->plan().nodes, pilot.at_nodes, change_per_cell,
+                                static_cast<double>(fit.exposure.spikes))),
+      block_ms};
   const Vector start = starting_values(coordinates, pilot.objective->coordinates(), pilot.minimum,
                                        &voltage_fit, pilot.at_spikes);
   fit.fixed.assign(coordinates.size(), false);
@@ -365,6 +434,7 @@ void maximise(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progress& pro
   const Matrix information =
       fit.likelihood->evaluate(start, Want::derivatives_and_expected).expected;
   std::vector<Penalty> penalties = penalties_for(fit.coordinates(), information);
+  take_pilot_smoothing(pilot.penalties, fit.coordinates(), start, penalties);
   set_given_smoothing(variant.smoothing, penalties);
   bound_separated_columns(*fit.likelihood, penalties);
   fit.penalised = std::make_unique<Penalised>(*fit.likelihood, std::move(penalties));
@@ -447,6 +517,7 @@ Estimate fit(const Recording& recording, const Variant& variant, const FitOption
       estimate.status_sentence = "No finite starting point was found; nothing is estimated.";
       return estimate;
     }
+    work.pilot_penalties = pilot.penalties;
     maximise(work, pilot, options.before ? 0.0 : lead_in, progress);
     fill_bookkeeping(work, estimate);
     if (estimate.status != FitStatus::failed && estimate.status != FitStatus::interrupted) {

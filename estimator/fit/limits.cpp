@@ -20,7 +20,7 @@ std::string number(double value, const char* format = "%.3g") {
 
 /// What a coordinate is called in a sentence.
 std::string plain_name(const std::string& coordinate) {
-  if (coordinate == "log_b") {
+  if (coordinate == "b") {
     return "Delta";
   }
   if (coordinate == "theta_0/Delta") {
@@ -119,7 +119,7 @@ void say_ties(const CellFit& fit, Estimate& estimate) {
       // theta_0 / Delta moves with 1 / Delta by construction; that is no limit of the data.
       const std::string& first = coordinates.names()[static_cast<std::size_t>(i)];
       const std::string& second = coordinates.names()[static_cast<std::size_t>(j)];
-      const bool by_construction = first == "log_b" && second == "theta_0/Delta";
+      const bool by_construction = first == "b" && second == "theta_0/Delta";
       if (std::abs(r) > tied_correlation && !by_construction) {
         estimate.limits.push_back(plain_name(first) + " and " + plain_name(second) +
                                   " can hardly be told apart (correlation " + number(r, "%.3f") +
@@ -169,12 +169,12 @@ void say_misspecification(const CellFit& fit, Estimate& estimate) {
                              " time blocks: robust (sandwich) intervals are rough");
     return;
   }
-  const std::ptrdiff_t log_b = fit.coordinates().index("log_b");
-  const std::ptrdiff_t at = log_b >= 0 ? log_b : 0;
+  const std::ptrdiff_t b_index = fit.coordinates().index("b");
+  const std::ptrdiff_t at = b_index >= 0 ? b_index : 0;
   const double ratio = std::sqrt(fit.sandwich(at, at) / fit.covariance(at, at));
   if (ratio > robust_ratio) {
     estimate.limits.push_back(
-        "the robust standard error of " + std::string(log_b >= 0 ? "Delta" : "the threshold") +
+        "the robust standard error of " + std::string(b_index >= 0 ? "Delta" : "the threshold") +
         " is " + number(ratio, "%.1f") +
         " times the model's own: the model class or stationarity is doubtful, prefer the robust "
         "interval");

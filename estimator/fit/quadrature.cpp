@@ -10,6 +10,10 @@ namespace {
 constexpr double shortest_after_spike_ms = 0.5;
 constexpr double growth_after_spike = 0.25;
 constexpr int most_parts = 16;
+/// Shares of all expected spikes in one cell below which it is kept whole, or joined to others.
+constexpr double hardly_any = 1e-6;
+constexpr double nothing = 1e-8;
+constexpr double longest_quiet_cell_ms = 8.0;
 constexpr double two_point_offset = 0.28867513459481287;  // 1 / (2 sqrt 3)
 
 }  // namespace
@@ -66,11 +70,12 @@ NodeSet place_nodes(std::vector<SweepCells> cells) {
 }
 
 std::vector<SweepCells> refined_cells(const NodeSet& pilot, const Vector& predictor,
-                                      double largest_change, double negligible_spikes) {
+                                      double largest_change, double expected_spikes) {
   std::vector<SweepCells> all;
   Eigen::Index node = 0;
   for (const SweepCells& sweep : pilot.cells) {
     SweepCells cells;
+    bool joinable = false;
     const auto n = static_cast<Eigen::Index>(sweep.size());
     for (Eigen::Index i = 0; i < n; ++i) {
       const Cell& cell = sweep[static_cast<std::size_t>(i)];
@@ -89,12 +94,22 @@ std::vector<SweepCells> refined_cells(const NodeSet& pilot, const Vector& predic
         }
       }
       const double length = cell.end_ms - cell.begin_ms;
-      if (length * std::exp(std::min(highest + change, 50.0)) < negligible_spikes) {
-        cells.push_back({cell.begin_ms, cell.end_ms, CellRule::midpoint});
+      const double share = length * std::exp(std::min(highest + change, 50.0)) / expected_spikes;
+      if (share < nothing) {
+        if (joinable && cells.back().end_ms == cell.begin_ms &&
+            cell.end_ms - cells.back().begin_ms <= longest_quiet_cell_ms) {
+          cells.back().end_ms = cell.end_ms;
+        } else {
+          cells.push_back({cell.begin_ms, cell.end_ms, CellRule::midpoint});
+        }
+        joinable = true;
         continue;
       }
-      const int parts =
-          static_cast<int>(std::clamp(std::ceil(change / largest_change), 1.0, double{most_parts}));
+      joinable = false;
+      const int parts = share < hardly_any
+                            ? 1
+                            : static_cast<int>(std::clamp(std::ceil(change / largest_change), 1.0,
+                                                          double{most_parts}));
       for (int p = 0; p < parts; ++p) {
         cells.push_back({cell.begin_ms + length * p / parts,
                          cell.begin_ms + length * (p + 1) / parts, CellRule::two_point});
@@ -106,19 +121,50 @@ std::vector<SweepCells> refined_cells(const NodeSet& pilot, const Vector& predic
   return all;
 }
 
-std::vector<SweepCells> halved_cells(const std::vector<SweepCells>& cells) {
+std::vector<SweepCells> finer_cells(const std::vector<SweepCells>& cells,
+                                    const std::vector<bool>& chosen) {
   std::vector<SweepCells> all;
+  std::size_t index = 0;
   for (const SweepCells& sweep : cells) {
-    SweepCells halves;
-    halves.reserve(sweep.size() * 2);
+    SweepCells finer;
+    finer.reserve(sweep.size());
     for (const Cell& cell : sweep) {
-      const double middle = 0.5 * (cell.begin_ms + cell.end_ms);
-      halves.push_back({cell.begin_ms, middle, cell.rule});
-      halves.push_back({middle, cell.end_ms, cell.rule});
+      if (!chosen[index++]) {
+        finer.push_back(cell);
+      } else if (cell.rule == CellRule::midpoint) {
+        finer.push_back({cell.begin_ms, cell.end_ms, CellRule::two_point});
+      } else {
+        const double middle = 0.5 * (cell.begin_ms + cell.end_ms);
+        finer.push_back({cell.begin_ms, middle, cell.rule});
+        finer.push_back({middle, cell.end_ms, cell.rule});
+      }
     }
-    all.push_back(std::move(halves));
+    all.push_back(std::move(finer));
   }
   return all;
+}
+
+std::vector<SweepCells> finer_cells(const std::vector<SweepCells>& cells) {
+  std::size_t count = 0;
+  for (const SweepCells& sweep : cells) {
+    count += sweep.size();
+  }
+  return finer_cells(cells, std::vector<bool>(count, true));
+}
+
+std::vector<double> cell_integrals(const NodeSet& nodes, const Vector& rate_at_nodes) {
+  std::vector<double> out;
+  Eigen::Index node = 0;
+  for (const SweepCells& sweep : nodes.cells) {
+    for (const Cell& cell : sweep) {
+      double sum = 0.0;
+      for (int i = 0; i < static_cast<int>(cell.rule); ++i, ++node) {
+        sum += nodes.weights_ms[static_cast<std::size_t>(node)] * rate_at_nodes[node];
+      }
+      out.push_back(sum);
+    }
+  }
+  return out;
 }
 
 }  // namespace softsill

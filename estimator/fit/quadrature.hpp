@@ -39,13 +39,19 @@ NodeSet place_nodes(std::vector<SweepCells> cells);
 
 /// Cells for the next fit, from the linear predictor x of a pilot fit at the midpoints of
 /// `pilot.cells` (all of CellRule::midpoint): a cell is split so that x changes by at most
-/// `largest_change` within a part, and kept as one midpoint where it holds less than
-/// `negligible_spikes` expected spikes even at its neighbours' hazard.
+/// `largest_change` within a part; where it holds hardly any of the `expected_spikes`, even at its
+/// neighbours' hazard, it is kept whole, and joined to its neighbours where it holds none.
 /// \param predictor log hazard (1/ms) at the pilot's nodes
 std::vector<SweepCells> refined_cells(const NodeSet& pilot, const Vector& predictor,
-                                      double largest_change, double negligible_spikes);
+                                      double largest_change, double expected_spikes);
 
-/// Every cell cut into two halves of the same rule.
-std::vector<SweepCells> halved_cells(const std::vector<SweepCells>& cells);
+/// Every cell made finer: a midpoint cell gets the two-point rule, others are cut into halves.
+std::vector<SweepCells> finer_cells(const std::vector<SweepCells>& cells);
+/// The same for chosen cells only, counted over all sweeps in order.
+std::vector<SweepCells> finer_cells(const std::vector<SweepCells>& cells,
+                                    const std::vector<bool>& chosen);
+
+/// Integral of a rate over every cell, from its values at the nodes.
+std::vector<double> cell_integrals(const NodeSet& nodes, const Vector& rate_at_nodes);
 
 }  // namespace softsill

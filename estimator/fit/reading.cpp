@@ -75,11 +75,11 @@ Derived Reading::combine(const KernelPart& part, const std::vector<double>& weig
   }
   if (part.scale == KernelPart::Scale::minus_one) {
     // theta_1 is carried in units of Delta = 1 / b.
-    const std::ptrdiff_t log_b = fit_.coordinates().index("log_b");
-    const double delta = std::exp(-theta[log_b]);
+    const std::ptrdiff_t b = fit_.coordinates().index("b");
+    const double delta = 1.0 / theta[b];
     out.value *= delta;
     out.gradient *= delta;
-    out.gradient[log_b] -= out.value;
+    out.gradient[b] -= out.value * delta;
   }
   return scaled(std::move(out));
 }
@@ -103,11 +103,11 @@ Derived Reading::noise_level() const {
   if (!fit_.joint()) {
     return scale_;
   }
-  const std::ptrdiff_t log_b = fit_.coordinates().index("log_b");
+  const std::ptrdiff_t b = fit_.coordinates().index("b");
   Derived out;
-  out.value = std::exp(-fit_.minimum.theta[log_b]);
+  out.value = 1.0 / fit_.minimum.theta[b];
   out.gradient = Vector::Zero(fit_.minimum.theta.size());
-  out.gradient[log_b] = -out.value;
+  out.gradient[b] = -out.value * out.value;
   return out;
 }
 
@@ -120,12 +120,12 @@ Derived Reading::threshold() const {
     out.gradient[0] = -1.0;
     return scaled(std::move(out));
   }
-  const std::ptrdiff_t log_b = fit_.coordinates().index("log_b");
+  const std::ptrdiff_t b = fit_.coordinates().index("b");
   const std::ptrdiff_t at = fit_.coordinates().index("theta_0/Delta");
-  const double delta = std::exp(-theta[log_b]);
+  const double delta = 1.0 / theta[b];
   out.value = theta[at] * delta + fit_.likelihood->voltage().reference_mV;
   out.gradient[at] = delta;
-  out.gradient[log_b] = -theta[at] * delta;
+  out.gradient[b] = -theta[at] * delta * delta;
   return out;
 }
 

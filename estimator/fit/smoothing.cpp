@@ -19,10 +19,11 @@ struct Slopes {
 };
 
 Slopes slopes_at(Penalised& objective, const Minimum& minimum,
-                 const std::vector<std::size_t>& chosen, bool exact) {
+                 const std::vector<std::size_t>& chosen, bool exact, bool central) {
   const Eigen::Index p = minimum.theta.size();
   const Eigen::LLT<Matrix> factor(minimum.hessian);
   const Matrix covariance = factor.solve(Matrix::Identity(p, p));
+  const Matrix unpenalised = minimum.hessian - objective.penalty_matrix();
   const auto n = static_cast<Eigen::Index>(chosen.size());
   Slopes out{Vector(n), Vector(n), Vector(n)};
   for (Eigen::Index j = 0; j < n; ++j) {
@@ -41,13 +42,14 @@ Slopes slopes_at(Penalised& objective, const Minimum& minimum,
       const double scale = direction.cwiseQuotient(covariance.diagonal().cwiseSqrt()).norm();
       if (scale > 1e-12) {
         const double h = 1e-3 / scale;
-        const Matrix up = objective.likelihood()
-                              .evaluate(minimum.theta + h * direction, Want::derivatives)
-                              .hessian;
-        const Matrix down = objective.likelihood()
-                                .evaluate(minimum.theta - h * direction, Want::derivatives)
-                                .hessian;
-        drift = covariance.cwiseProduct(up - down).sum() / (2.0 * h);
+        auto hessian_at = [&](double step) {
+          return objective.likelihood()
+              .evaluate(minimum.theta + step * direction, Want::derivatives)
+              .hessian;
+        };
+        const Matrix up = hessian_at(h);
+        drift = central ? covariance.cwiseProduct(up - hessian_at(-h)).sum() / (2.0 * h)
+                        : covariance.cwiseProduct(up - unpenalised).sum() / h;
       }
     }
     out.roughness[j] = c.dot(scaled * c);
@@ -81,7 +83,11 @@ Smoothed choose_smoothing(Penalised& objective, const Vector& start,
     }
   }
   Smoothed out;
-  out.minimum = minimize(objective, start, options.minimizer);
+  // Steps on the way need the minimum only to where the slopes stop changing.
+  const bool tight = options.gradient < 1e-3;
+  MinimizerOptions rough = options.minimizer;
+  rough.decrement = std::max(rough.decrement, tight ? 0.0 : 1e-5);
+  out.minimum = minimize(objective, start, rough);
   out.settled = chosen.empty();
   const auto n = static_cast<Eigen::Index>(chosen.size());
   Vector last_step = Vector::Zero(n), last_gradient = Vector::Zero(n);
@@ -93,7 +99,7 @@ Smoothed choose_smoothing(Penalised& objective, const Vector& start,
         (options.progress && !options.progress(round))) {
       break;
     }
-    const Slopes slopes = slopes_at(objective, out.minimum, chosen, exact);
+    const Slopes slopes = slopes_at(objective, out.minimum, chosen, exact, tight);
     double worst = 0.0;
     for (Eigen::Index j = 0; j < n; ++j) {
       const double log_lambda =
@@ -103,11 +109,11 @@ Smoothed choose_smoothing(Penalised& objective, const Vector& start,
                          (log_lambda <= lowest_log_lambda && slopes.gradient[j] < 0.0);
       worst = std::max(worst, stuck ? 0.0 : std::abs(slopes.gradient[j]));
     }
-    if (worst < options.gradient) {
-      if (exact) {
-        out.settled = true;
-        break;
-      }
+    if (worst < options.gradient && exact) {
+      out.settled = true;
+      break;
+    }
+    if (worst < 10.0 * options.gradient && !exact) {
       exact = true;
       last_step.setZero();
       continue;
@@ -132,6 +138,10 @@ Smoothed choose_smoothing(Penalised& objective, const Vector& start,
       penalty.lambda = std::exp(log_lambda);
     }
     last_gradient = slopes.gradient;
+    out.minimum = minimize(objective, out.minimum.theta, rough);
+  }
+  if (rough.decrement > options.minimizer.decrement && out.minimum.finite &&
+      !out.minimum.interrupted) {
     out.minimum = minimize(objective, out.minimum.theta, options.minimizer);
   }
   if (out.minimum.finite && out.minimum.positive_definite) {

@@ -13,7 +13,7 @@ namespace softsill {
 
 struct SmoothingOptions {
   /// Stop when no |dV/d log lambda| exceeds this (nats per unit of log lambda).
-  double gradient = 0.02;
+  double gradient = 0.05;
   int rounds = 60;
   MinimizerOptions minimizer;
   std::function<bool(int round)> progress;  ///< false stops

@@ -97,6 +97,8 @@ class Sums {
   Sums(Eigen::Index width, Want want) : width_(width), want_(want) {
     if (want != Want::value) {
       gradient = Vector::Zero(width + 2);
+    }
+    if (second_order()) {
       hessian = Matrix::Zero(width + 2, width + 2);
     }
     if (want == Want::derivatives_and_expected) {
@@ -118,6 +120,15 @@ class Sums {
       return;
     }
     gradient.head(width_).noalias() += rows.transpose() * x;
+    if (!second_order()) {
+      if (own) {
+        for (const Term& t : terms) {
+          gradient[width_] += t.l;
+          gradient[width_ + 1] += t.n;
+        }
+      }
+      return;
+    }
     add_square(rows, xx, hessian);
     if (want_ == Want::derivatives_and_expected) {
       for (Eigen::Index i = 0; i < n; ++i) {
@@ -134,6 +145,8 @@ class Sums {
     value += other.value;
     if (want_ != Want::value) {
       gradient += other.gradient;
+    }
+    if (second_order()) {
       hessian += other.hessian;
     }
     if (want_ == Want::derivatives_and_expected) {
@@ -146,6 +159,10 @@ class Sums {
   Matrix hessian, expected;  ///< lower triangles are right
 
  private:
+  bool second_order() const {
+    return want_ == Want::derivatives || want_ == Want::derivatives_and_expected;
+  }
+
   /// out += rows^T diag(weight) rows, lower triangle.
   void add_square(const Eigen::Ref<const RowMatrix>& rows, const Vector& weight, Matrix& out) {
     scaled_ = rows;
@@ -248,6 +265,8 @@ SpikeEvaluation evaluate_spikes(const SpikeDesign& design, const Escape& escape,
       std::isfinite(total.value) ? total.value : -std::numeric_limits<double>::infinity();
   if (want != Want::value) {
     out.gradient = std::move(total.gradient);
+  }
+  if (want == Want::derivatives || want == Want::derivatives_and_expected) {
     out.information = -Matrix(total.hessian.selfadjointView<Eigen::Lower>());
   }
   if (want == Want::derivatives_and_expected) {

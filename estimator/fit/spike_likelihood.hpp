@@ -40,7 +40,7 @@ struct SpikeEvaluation {
   Matrix expected;
 };
 
-enum class Want { value, derivatives, derivatives_and_expected };
+enum class Want { value, gradient, derivatives, derivatives_and_expected };
 
 /// Minus infinity when a spike is impossible or the integral overflows (never an exception).
 /// Deterministic for any number of threads.

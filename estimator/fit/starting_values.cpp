@@ -118,7 +118,7 @@ Vector starting_values(const Coordinates& target, const Coordinates& pilot,
     // Spikes that do not follow the input leave b near 0; the gate will say so.
     b = std::isfinite(ratio) ? std::clamp(ratio, 0.02, 50.0) : 0.5;
   }
-  theta[target.index("log_b")] = std::log(b);
+  theta[target.index("b")] = b;
   theta[target.index("theta_0/Delta")] = b * theta[0] - constant;
   if (const KernelPart* theta_1 = target.part("theta_1")) {
     Vector sum = Vector::Zero(static_cast<Eigen::Index>(theta_1->size()));

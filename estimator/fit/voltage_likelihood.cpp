@@ -239,10 +239,10 @@ VoltageEvaluation evaluate_voltage(const VoltageStatistics& statistics, const Ve
   out.information.col(p).head(p) = 2.0 * precision * force;
   out.information.col(p + 1).head(p) = -precision * force_z;
   out.information(p, p) = 2.0 * precision * q;
-  out.information(p, p + 1) = -precision * q_z;
   out.information(p + 1, p + 1) = 0.5 * precision * q_zz - s.pairs * sech2;
   out.information.row(p) = out.information.col(p).transpose();
   out.information.row(p + 1) = out.information.col(p + 1).transpose();
+  out.information(p, p + 1) = out.information(p + 1, p) = -precision * q_z;
   // At the truth q = samples, q_z = 2 pairs tanh, q_zz = 4 (...): (log sigma, atanh rho) have
   // expected information [2N, -2 P t; ., P (1 + t^2)].
   out.expected = Matrix::Zero(p + 2, p + 2);
