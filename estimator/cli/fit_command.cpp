@@ -140,7 +140,7 @@ int run_fit(const Session& session, const FitArguments& given) {
   if (given.spikes_alone) {
     variant.use_voltage = false;
   }
-  const Recording recording = read_sheet(given.sheet);
+  const Recording recording = read_cell_sheet(given.sheet);
   make_directory(given.out);
 
   const bool talk = !session.quiet && !session.json;
