@@ -81,6 +81,15 @@ bool mostly_repeats_itself(const std::vector<double>& values) {
   return 2 * same > values.size();
 }
 
+/// True when both sweeps have one driving signal, to the last bit and in the same windows.
+bool same_input(const Sweep& a, const Sweep& b) {
+  return a.step_ms == b.step_ms && a.start_ms == b.start_ms && a.input == b.input &&
+         std::equal(a.analysed.begin(), a.analysed.end(), b.analysed.begin(), b.analysed.end(),
+                    [](const Interval& x, const Interval& y) {
+                      return x.begin_ms == y.begin_ms && x.end_ms == y.end_ms;
+                    });
+}
+
 void judge_input(const Sweep& sweep, const SweepQuality& quality, const Recording& recording,
                  bool all_constant, Findings& findings) {
   const char* const topic = "driving signal";
@@ -351,8 +360,17 @@ QualityReport check_quality(const Recording& recording, bool anchored) {
   report.input_is_current = recording.input_is_current;
   report.spike_detection = recording.spike_detection;
   std::vector<double> intervals;
-  for (const Sweep& sweep : recording.sweeps) {
-    const SweepQuality quality = measure_sweep(sweep);
+  std::map<std::string, std::size_t> first_of;
+  for (std::size_t i = 0; i < recording.sweeps.size(); ++i) {
+    const Sweep& sweep = recording.sweeps[i];
+    const InputQuality* known = nullptr;
+    if (!sweep.repeats.empty()) {
+      const std::size_t first = first_of.emplace(sweep.repeats, i).first->second;
+      if (first < i && same_input(recording.sweeps[first], sweep)) {
+        known = &report.sweeps[first].input;
+      }
+    }
+    const SweepQuality quality = measure_sweep(sweep, known);
     (sweep.use == Use::estimate ? report.estimate_ms : report.predict_ms) += quality.analysed_ms;
     (sweep.use == Use::estimate ? report.estimate_spikes : report.predict_spikes) += quality.spikes;
     report.intervals_under_2ms += quality.intervals_under_2ms;

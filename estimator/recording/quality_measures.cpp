@@ -257,7 +257,7 @@ VoltageQuality measure_voltage(const Sweep& sweep) {
   return quality;
 }
 
-SweepQuality measure_sweep(const Sweep& sweep) {
+SweepQuality measure_sweep(const Sweep& sweep, const InputQuality* known) {
   SweepQuality quality;
   quality.name = sweep.name;
   quality.use = sweep.use;
@@ -265,7 +265,7 @@ SweepQuality measure_sweep(const Sweep& sweep) {
   quality.step_ms = sweep.step_ms;
   quality.duration_ms = sweep.duration_ms();
   quality.analysed_ms = analysed_ms(sweep);
-  quality.input = measure_input(sweep);
+  quality.input = known != nullptr ? *known : measure_input(sweep);
   if (sweep.has_voltage()) {
     quality.voltage = measure_voltage(sweep);
   }

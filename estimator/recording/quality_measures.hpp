@@ -24,7 +24,8 @@ std::optional<double> coefficient_of_variation(std::span<const double> intervals
 InputQuality measure_input(const Sweep& sweep);
 /// Sweep must have a potential.
 VoltageQuality measure_voltage(const Sweep& sweep);
-SweepQuality measure_sweep(const Sweep& sweep);
+/// \param known measures of the driving signal, where an equal one was measured before
+SweepQuality measure_sweep(const Sweep& sweep, const InputQuality* known = nullptr);
 
 /// True when all analysed samples of the driving signal are equal up to rounding.
 bool constant_input(const InputQuality& input);
