@@ -43,7 +43,7 @@ class Field {
     }
     for (std::size_t i = 0; i < json_->size(); ++i) {
       Field inside(*this);
-      inside.path_ += "[" + std::to_string(i) + "]";
+      inside.path_.append("[").append(std::to_string(i)).append("]");
       inside.json_ = &(*json_)[i];
       take(inside);
     }
@@ -132,7 +132,8 @@ class Field {
     try {
       return make();
     } catch (const Error& error) {
-      fail(error.problem(), error.remedy());
+      throw Error(*file_, error.place().empty() ? path_ : path_ + ", " + error.place(),
+                  error.problem(), error.remedy());
     }
   }
 
