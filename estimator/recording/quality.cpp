@@ -59,7 +59,7 @@ class Findings {
 /// Longest stretch in which the potential does not move at all.
 double longest_still_ms(const Sweep& sweep) {
   std::size_t longest = 0;
-  for (const Run& range : analysed_samples(sweep)) {
+  for (const SampleRange& range : analysed_samples(sweep)) {
     std::size_t begin = range.begin;
     for (std::size_t i = range.begin + 1; i <= range.end; ++i) {
       if (i == range.end || sweep.voltage_mV[i] != sweep.voltage_mV[begin]) {
@@ -434,7 +434,7 @@ void require_fittable(const Recording& recording, bool with_voltage) {
     }
     InputQuality input;
     bool first = true;
-    for (const Run& range : analysed_samples(sweep)) {
+    for (const SampleRange& range : analysed_samples(sweep)) {
       const auto [low, high] =
           std::minmax_element(sweep.input.begin() + static_cast<std::ptrdiff_t>(range.begin),
                               sweep.input.begin() + static_cast<std::ptrdiff_t>(range.end));

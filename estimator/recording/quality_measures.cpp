@@ -16,8 +16,8 @@ constexpr std::size_t samples_per_median = 20000;
 /// Calls visit(begin, end) with sample ranges inside `samples` that lie further than `before_ms`
 /// before and `after_ms` after every spike.
 template <typename Visit>
-void visit_away_from_spikes(const Sweep& sweep, Run samples, double before_ms, double after_ms,
-                            const Visit& visit) {
+void visit_away_from_spikes(const Sweep& sweep, SampleRange samples, double before_ms,
+                            double after_ms, const Visit& visit) {
   const auto index = [&](double time_ms) {
     const double i = std::ceil((time_ms - sweep.start_ms) / sweep.step_ms);
     return i <= 0.0 ? std::size_t{0} : std::min(sweep.input.size(), static_cast<std::size_t>(i));
@@ -47,9 +47,10 @@ void visit_away_from_spikes(const Sweep& sweep, Run samples, double before_ms, d
   }
 }
 
-std::optional<double> median_away_from_spikes(const Sweep& sweep, const std::vector<Run>& ranges) {
+std::optional<double> median_away_from_spikes(const Sweep& sweep,
+                                              const std::vector<SampleRange>& ranges) {
   std::size_t total = 0;
-  for (const Run& range : ranges) {
+  for (const SampleRange& range : ranges) {
     visit_away_from_spikes(sweep, range, 2.0, 10.0,
                            [&](std::size_t begin, std::size_t end) { total += end - begin; });
   }
@@ -59,7 +60,7 @@ std::optional<double> median_away_from_spikes(const Sweep& sweep, const std::vec
   const std::size_t stride = std::max<std::size_t>(1, total / samples_per_median);
   std::vector<double> chosen;
   std::size_t phase = 0;
-  for (const Run& range : ranges) {
+  for (const SampleRange& range : ranges) {
     visit_away_from_spikes(sweep, range, 2.0, 10.0, [&](std::size_t begin, std::size_t end) {
       for (std::size_t i = begin; i < end; ++i) {
         if (phase++ % stride == 0) {
@@ -71,7 +72,7 @@ std::optional<double> median_away_from_spikes(const Sweep& sweep, const std::vec
   return median(chosen);
 }
 
-Run samples_of(const Sweep& sweep, const Interval& interval) {
+SampleRange samples_of(const Sweep& sweep, const Interval& interval) {
   const auto index = [&](double time_ms) {
     // The tolerance keeps 0.3 / 0.1 = 2.9999... from costing a sample.
     const double i = std::ceil((time_ms - sweep.start_ms) / sweep.step_ms - 1e-6);
@@ -148,10 +149,10 @@ double analysed_ms(const Sweep& sweep) {
   return total;
 }
 
-std::vector<Run> analysed_samples(const Sweep& sweep) {
-  std::vector<Run> ranges;
+std::vector<SampleRange> analysed_samples(const Sweep& sweep) {
+  std::vector<SampleRange> ranges;
   for (const Interval& interval : sweep.analysed) {
-    const Run range = samples_of(sweep, interval);
+    const SampleRange range = samples_of(sweep, interval);
     if (range.begin < range.end) {
       ranges.push_back(range);
     }
@@ -194,12 +195,12 @@ std::optional<double> coefficient_of_variation(std::span<const double> intervals
 
 InputQuality measure_input(const Sweep& sweep) {
   InputQuality quality;
-  const std::vector<Run> ranges = analysed_samples(sweep);
+  const std::vector<SampleRange> ranges = analysed_samples(sweep);
   std::vector<std::span<const double>> pieces;
   std::size_t count = 0;
   double sum = 0.0;
   bool first = true;
-  for (const Run& range : ranges) {
+  for (const SampleRange& range : ranges) {
     const auto piece = std::span(sweep.input).subspan(range.begin, range.end - range.begin);
     for (const double value : piece) {
       sum += value;
@@ -241,10 +242,10 @@ VoltageQuality measure_voltage(const Sweep& sweep) {
   quality.minimum_mV = *lowest;
   quality.maximum_mV = *highest;
   quality.median_subthreshold_mV = median_away_from_spikes(sweep, analysed_samples(sweep));
-  const std::vector<Run> clipped = clipped_runs(sweep.voltage_mV, sweep.step_ms);
-  for (const Run& range : analysed_samples(sweep)) {
-    for (const Run& run : clipped) {
-      const Run both{std::max(run.begin, range.begin), std::min(run.end, range.end)};
+  const std::vector<SampleRange> clipped = clipped_runs(sweep.voltage_mV, sweep.step_ms);
+  for (const SampleRange& range : analysed_samples(sweep)) {
+    for (const SampleRange& run : clipped) {
+      const SampleRange both{std::max(run.begin, range.begin), std::min(run.end, range.end)};
       if (both.begin >= both.end) {
         continue;
       }
@@ -325,7 +326,7 @@ std::optional<Drift> measure_resting_drift(const Recording& recording) {
     if (!block.sweep->has_voltage()) {
       continue;
     }
-    std::vector<Run> ranges;
+    std::vector<SampleRange> ranges;
     for (const Interval& interval : block.analysed) {
       ranges.push_back(samples_of(*block.sweep, interval));
     }

@@ -12,7 +12,7 @@
 namespace softsill {
 
 /// Sample ranges of the analysed intervals; empty ones left out.
-std::vector<Run> analysed_samples(const Sweep& sweep);
+std::vector<SampleRange> analysed_samples(const Sweep& sweep);
 double analysed_ms(const Sweep& sweep);
 /// Spikes inside an interval.
 std::span<const double> spikes_within(const Sweep& sweep, const Interval& interval);

@@ -8,7 +8,7 @@ namespace softsill {
 namespace {
 
 constexpr double jitter_share = 0.02;
-constexpr double written_share = 0.40;
+constexpr double coarsest_share = 0.401;  // 40 kHz written in steps of 0.01 ms, just
 
 double rounded_to_digits(double value, int digits) {
   const double exponent = std::floor(std::log10(value));
@@ -45,7 +45,8 @@ bool SamplingClock::add(double value, double resolution) {
   const double span = value - first_;
   const double step = std::max(0.0, span / index);
   const double binary = own_float + first_rounding_ + 4e-16 * (std::abs(value) + std::abs(first_));
-  const double written = std::min(1.02 * finest_, written_share * step);
+  const double largest_step = std::max(0.0, span + finest_) / index;
+  const double written = finest_ <= coarsest_share * largest_step ? 1.02 * finest_ : 0.0;
   const double tolerance = 2.0 * jitter_share * step + written + binary;
   low_ = std::max(low_, (span - tolerance) / index);
   high_ = std::min(high_, (span + tolerance) / index);

@@ -12,9 +12,8 @@ namespace softsill {
 ///
 /// The tolerance of a row is the sum of
 /// - 2 % of the sampling interval (jitter of the recording clock),
-/// - the last written digit, but at most 40 % of the sampling interval (so that a missing or
-/// doubled
-///   sample always shows),
+/// - one unit of the last written digit, where that is at most 40 % of the sampling interval; times
+///   written more coarsely must be exact, so that a missing or doubled sample always shows,
 /// - the rounding of a 32-bit float, for values that are 32-bit floats.
 class SamplingClock {
  public:

@@ -1,6 +1,5 @@
 #include "estimator/recording/sheet_plan.hpp"
 
-#define TOML_HEADER_ONLY 1
 #include <toml++/toml.h>
 
 #include <cmath>

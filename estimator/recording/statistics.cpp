@@ -223,12 +223,12 @@ double median(std::vector<double>& values) {
   return *middle;
 }
 
-std::vector<Run> clipped_runs(std::span<const double> values, double step_ms) {
+std::vector<SampleRange> clipped_runs(std::span<const double> values, double step_ms) {
   constexpr std::size_t fewest_samples = 3;
   constexpr std::size_t fewest_occasions = 3;
   constexpr std::size_t pile_up = 3;
   constexpr double apart_ms = 5.0;  // closer runs are one occasion
-  std::vector<Run> found;
+  std::vector<SampleRange> found;
   if (values.empty()) {
     return found;
   }
@@ -241,7 +241,7 @@ std::vector<Run> clipped_runs(std::span<const double> values, double step_ms) {
     double next = other;  // the value nearest to the extreme
     std::size_t at_extreme = 0;
     std::size_t at_next = 0;
-    std::vector<Run> runs;
+    std::vector<SampleRange> runs;
     std::size_t occasions = 0;
     for (std::size_t i = 0; i < values.size();) {
       if (values[i] != extreme) {

@@ -43,9 +43,9 @@ double median(std::vector<double>& values);
 /// A signal counts as clipped at an extreme when it sits there for three samples or more on at
 /// least three occasions, and there three times as often as at the next value: a signal that merely
 /// touches its extreme, even one rounded to few digits, thins out towards it instead.
-struct Run {
+struct SampleRange {
   std::size_t begin = 0, end = 0;
 };
-std::vector<Run> clipped_runs(std::span<const double> values, double step_ms);
+std::vector<SampleRange> clipped_runs(std::span<const double> values, double step_ms);
 
 }  // namespace softsill
