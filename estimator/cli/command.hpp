@@ -20,10 +20,10 @@ enum ExitStatus : int {
 
 /// One run of the program.
 struct Session {
-  std::string command_line;      ///< for provenance, as typed
-  bool quiet = false;            ///< --quiet: errors only
-  bool json = false;             ///< --json: results on stdout as one JSON document
-  std::function<int()> run;      ///< set by the chosen subcommand; returns an ExitStatus
+  std::string command_line;  ///< for provenance, as typed
+  bool quiet = false;        ///< --quiet: errors only
+  bool json = false;         ///< --json: results on stdout as one JSON document
+  std::function<int()> run;  ///< set by the chosen subcommand; returns an ExitStatus
 };
 
 // Each adds one subcommand to the program: options grouped, every default shown, one example in the

@@ -58,35 +58,33 @@ std::string plain_name(const std::string& name) {
   return plain;
 }
 
-void add_quantity(Table& table, const std::string& name, const Quantity& quantity) {
-  if (!quantity.value) {
-    table.add({name, "-", "", "", "", "absent: " + quantity.why_absent});
-    return;
-  }
-  const QuantityText text = quantity_text(quantity);
-  table.add({name, text.value, text.low, text.high, quantity.unit, quantity.method});
-}
-
 /// Every parameter once: the first row of a name is the one to quote, later ones (robust intervals)
 /// are in parameters.csv.
 std::string parameters_text(const Estimate& estimate) {
   Table table({"", "value", "low", "high", "unit", "interval from"},
               {Align::left, Align::right, Align::right, Align::right, Align::left, Align::left});
+  std::string absent;
   std::set<std::string> seen;
   const auto add = [&](const std::string& name, const Quantity& quantity) {
-    if (seen.insert(name).second) {
-      add_quantity(table, plain_name(name), quantity);
+    if (!seen.insert(name).second) {
+      return;
     }
+    if (!quantity.value) {
+      absent += "  " + wrap(plain_name(name) + ": none, " + quantity.why_absent, 4, 2) + '\n';
+      return;
+    }
+    const QuantityText text = quantity_text(quantity);
+    table.add({plain_name(name), text.value, text.low, text.high, quantity.unit, quantity.method});
   };
+  add("noise_level", estimate.noise_level);
   if (estimate.parameters.empty()) {
-    add("noise_level", estimate.noise_level);
     add("threshold", estimate.threshold);
     add("resting_potential", estimate.resting_potential);
   }
   for (const NamedQuantity& row : estimate.parameters) {
     add(row.name, row.quantity);
   }
-  return table.str();
+  return (table.empty() ? "" : table.str()) + absent;
 }
 
 const Kernel* kernel_of(const Model& model, const std::string& name) {
@@ -115,43 +113,46 @@ std::string integral_unit(const std::string& unit) {
   return unit + " ms";
 }
 
-std::string largest_text(const KernelCurve& curve) {
+/// Row of a kernel: where it is largest, with the band there, its integral, what it cost.
+std::vector<std::string> kernel_row(const KernelCurve& curve, const Model& model) {
+  std::vector<std::string> row{curve.kernel};
   if (curve.value.empty()) {
-    return "";
+    return row;
   }
   const auto at = static_cast<std::size_t>(
       std::max_element(curve.value.begin(), curve.value.end(),
                        [](double a, double b) { return std::abs(a) < std::abs(b); }) -
       curve.value.begin());
-  std::string text =
-      significant(curve.value[at]) + " at " + significant(curve.lag_ms[at], 2) + " ms";
-  if (at < curve.low.size() && std::isfinite(curve.low[at])) {
-    text += " (" + significant(curve.low[at]) + " .. " + significant(curve.high[at]) + ")";
+  Quantity largest;
+  largest.value = curve.value[at];
+  if (at < curve.low.size() && std::isfinite(curve.low[at]) && std::isfinite(curve.high[at])) {
+    largest.low = curve.low[at];
+    largest.high = curve.high[at];
   }
-  return text;
+  const QuantityText text = quantity_text(largest);
+  const Kernel* kernel = kernel_of(model, curve.kernel);
+  row.insert(
+      row.end(),
+      {text.value, text.low, text.high, curve.unit, significant(curve.lag_ms[at], 2) + " ms",
+       kernel != nullptr ? significant(kernel->integral()) : "",
+       kernel != nullptr ? integral_unit(curve.unit) : "",
+       curve.effective_degrees_of_freedom > 0.0 ? significant(curve.effective_degrees_of_freedom, 2)
+                                                : ""});
+  return row;
 }
 
 std::string kernels_text(const Estimate& estimate) {
-  Table table({"kernel", "largest", "unit", "integral", "", "free", "data say nothing at"},
-              {Align::left, Align::left, Align::left, Align::right, Align::left, Align::right,
-               Align::left});
+  Table table({"kernel", "largest", "low", "high", "unit", "at", "integral", "", "freedom"},
+              {Align::left, Align::right, Align::right, Align::right, Align::left, Align::right,
+               Align::right, Align::left, Align::right});
   std::string absent;
   for (const KernelCurve& curve : estimate.kernels) {
     if (!curve.why_absent.empty()) {
       absent += "  " + wrap(curve.kernel + ": none, " + curve.why_absent, 4, 2) + '\n';
-      continue;
+    } else if (curve.kernel.find("_by_") == std::string::npos) {
+      // Curves made only for the consistency check are in kernels.csv.
+      table.add(kernel_row(curve, estimate.model));
     }
-    std::string silent;
-    for (const Interval& stretch : curve.undetermined) {
-      silent += (silent.empty() ? "" : ", ") + significant(stretch.begin_ms, 2) + ".." +
-                significant(stretch.end_ms, 2) + " ms";
-    }
-    const Kernel* kernel = kernel_of(estimate.model, curve.kernel);
-    const bool free_known = curve.effective_degrees_of_freedom > 0.0;
-    table.add({curve.kernel, largest_text(curve), curve.unit,
-               kernel != nullptr ? significant(kernel->integral()) : "",
-               kernel != nullptr ? integral_unit(curve.unit) : "",
-               free_known ? significant(curve.effective_degrees_of_freedom, 2) : "", silent});
   }
   return (table.empty() ? "" : table.str()) + absent;
 }
@@ -164,13 +165,13 @@ std::string trust_text(const Estimate& estimate) {
   const double gain =
       (estimate.spike_log_likelihood - estimate.constant_rate_log_likelihood) / std::numbers::ln2;
   table.add(
-      {"log-likelihood", significant(estimate.log_likelihood, 7) + " nats; spikes " +
-                             significant(estimate.spike_log_likelihood, 6) + " nats, " +
-                             significant(gain / std::max(1.0, spikes)) +
-                             " bits per spike above a constant rate (same data, not held out)"});
-  table.add({"degrees of freedom",
-             significant(estimate.effective_degrees_of_freedom) + " effective, of " +
-                 std::to_string(estimate.coordinates.size()) + " coordinates"});
+      {"log-likelihood", fixed(estimate.log_likelihood, 1) + " nats; spikes alone " +
+                             fixed(estimate.spike_log_likelihood, 1) + " nats, " +
+                             fixed(gain / std::max(1.0, spikes), 2) +
+                             " bits per spike above a constant rate (on the data of the fit)"});
+  table.add(
+      {"degrees of freedom", fixed(estimate.effective_degrees_of_freedom, 1) + " effective, of " +
+                                 std::to_string(estimate.coordinates.size()) + " coordinates"});
   table.add({"quadrature",
              "off by " + significant(estimate.node_error.expected_spikes_error, 2) +
                  " expected spikes (allowed " + significant(estimate.node_error.allowed, 2) +
@@ -201,15 +202,16 @@ std::string spikes_text(const Recording& recording) {
     if (sweeps == 0) {
       continue;
     }
-    std::string origin = "times given";
-    if (detected == sweeps) {
-      origin = "detected from the potential";
-    } else if (detected > 0) {
-      origin = "detected from the potential in " + plural(detected, "sweep") + ", given elsewhere";
+    std::string origin = "as listed";
+    if (detected > 0) {
+      origin = "found by " + recording.spike_detection;
+    }
+    if (detected > 0 && detected < sweeps) {
+      origin += " in " + plural(detected, "sweep") + ", as listed elsewhere";
     }
     table.add({use == Use::estimate ? "to estimate" : "held out",
                plural(sweeps, "sweep") + ", " + significant(seconds) + " s, " +
-                   plural(spikes, "spike") + " (" + origin + ")"});
+                   plural(spikes, "spike") + ", " + origin});
   }
   return table.str();
 }

@@ -15,6 +15,7 @@
 #include "softsill/error.hpp"
 #include "softsill/files.hpp"
 #include "softsill/fit.hpp"
+#include "softsill/quality.hpp"
 #include "softsill/sheet.hpp"
 
 namespace softsill::cli {
@@ -66,11 +67,12 @@ auto checked_by(Parser parser) {
   };
 }
 
-std::string at_least(const std::string& text, double least) {
-  double value = 0.0;
-  const auto read = std::from_chars(text.data(), text.data() + text.size(), value);
-  if (read.ec != std::errc{} || read.ptr != text.data() + text.size() || !(value >= least)) {
-    return "'" + text + "' is not a number of at least " + significant(least);
+std::string at_least(const std::string& text, int least) {
+  long long value = 0;
+  const char* end = text.data() + text.size();
+  const auto read = std::from_chars(text.data(), end, value);
+  if (read.ec != std::errc{} || read.ptr != end || value < least || value > 1'000'000) {
+    return "'" + text + "' is not a whole number of at least " + std::to_string(least);
   }
   return {};
 }
@@ -141,6 +143,7 @@ int run_fit(const Session& session, const FitArguments& given) {
     variant.use_voltage = false;
   }
   const Recording recording = read_cell_sheet(given.sheet);
+  require_fittable(recording);
   make_directory(given.out);
 
   const bool talk = !session.quiet && !session.json;

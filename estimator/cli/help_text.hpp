@@ -14,7 +14,13 @@ namespace softsill::cli {
 /// and a default stands in brackets where the description ends.
 class HelpText : public CLI::Formatter {
  public:
-  HelpText() { column_width(left_column); }
+  /// The group of options that every command understands.
+  static constexpr const char* everywhere_group = "Everywhere";
+
+  HelpText() {
+    column_width(left_column);
+    label("Positionals", "Arguments");
+  }
 
   std::string make_description(const CLI::App* app) const override {
     const std::string text = app->get_description();
@@ -32,6 +38,17 @@ class HelpText : public CLI::Formatter {
       }
     }
     return text + " [OPTIONS]\n";
+  }
+
+  std::string make_help(const CLI::App* app, std::string name,
+                        CLI::AppFormatMode mode) const override {
+    // CLI11 hands down "softsill fit" only where it knows the parent.
+    if (app->get_parent() != nullptr) {
+      name = app->get_parent()->get_name() + ' ' + app->get_name();
+    }
+    const std::string commands = make_subcommands(app, mode);
+    return make_description(app) + make_usage(app, name) + make_positionals(app) + commands +
+           options_by_group(app) + '\n' + make_footer(app);
   }
 
   std::string make_option_opts(const CLI::Option* option) const override {
@@ -55,6 +72,37 @@ class HelpText : public CLI::Formatter {
 
  private:
   static constexpr std::size_t left_column = 30;
+
+  /// Groups in the order of the command, and at last what works everywhere.
+  std::string options_by_group(const CLI::App* app) const {
+    std::string text;
+    for (const std::string& group : app->get_groups()) {
+      std::string entries;
+      for (const CLI::Option* option : app->get_options()) {
+        if (option->get_group() == group && option->nonpositional() && !everywhere(app, option)) {
+          entries += make_option(option, false);
+        }
+      }
+      text += entries.empty() ? "" : "\n" + group + ":\n" + entries;
+    }
+    text += "\nEverywhere:\n";
+    for (const CLI::App* holder : {app, app->get_parent()}) {
+      if (holder == nullptr) {
+        continue;
+      }
+      for (const CLI::Option* option : holder->get_options()) {
+        const bool shown_already = holder != app && option == holder->get_help_ptr();
+        if (everywhere(holder, option) && !shown_already) {
+          text += make_option(option, false);
+        }
+      }
+    }
+    return text;
+  }
+
+  static bool everywhere(const CLI::App* app, const CLI::Option* option) {
+    return option == app->get_help_ptr() || option->get_group() == everywhere_group;
+  }
 
   static std::string entry(const std::string& name, const std::string& description) {
     std::string text = "  " + name;

@@ -73,6 +73,18 @@ std::string unknown_command(CLI::App& program, int argc, char** argv) {
   return {};
 }
 
+std::vector<std::string> option_names(const CLI::App& program, const CLI::App& command) {
+  std::vector<std::string> names;
+  for (const CLI::App* app : {&command, &program}) {
+    for (const CLI::Option* option : app->get_options()) {
+      for (const std::string& name : option->get_lnames()) {
+        names.push_back("--" + name);
+      }
+    }
+  }
+  return names;
+}
+
 /// CLI11's message, or a better one where it leaves the reader guessing.
 std::string usage_message(CLI::App& program, const CLI::ParseError& error) {
   const std::vector<CLI::App*> chosen = program.get_subcommands();
@@ -80,23 +92,16 @@ std::string usage_message(CLI::App& program, const CLI::ParseError& error) {
   const std::string name =
       command == &program ? std::string("softsill") : "softsill " + command->get_name();
   const std::string see = "; see " + name + " --help";
-  if (dynamic_cast<const CLI::ExtrasError*>(&error) != nullptr) {
-    for (const std::string& word : program.remaining(true)) {
-      if (word.size() > 1 && word[0] == '-') {
-        std::vector<std::string> options;
-        for (CLI::App* app : {command, &program}) {
-          for (const CLI::Option* option : app->get_options()) {
-            for (const std::string& long_name : option->get_lnames()) {
-              options.push_back("--" + long_name);
-            }
-          }
-        }
-        const std::string typed = word.substr(0, word.find('='));
-        return "unknown option '" + typed + "'; the nearest is " + nearest_word(typed, options) +
-               see;
-      }
-      return "unexpected argument '" + word + "'" + see;
+  // A mistyped option also makes what follows it look missing or unexpected: name it first.
+  for (const std::string& word : program.remaining(true)) {
+    if (word.size() > 1 && word[0] == '-') {
+      const std::string typed = word.substr(0, word.find('='));
+      return "unknown option '" + typed + "'; the nearest is " +
+             nearest_word(typed, option_names(program, *command)) + see;
     }
+  }
+  if (dynamic_cast<const CLI::ExtrasError*>(&error) != nullptr) {
+    return "unexpected argument '" + program.remaining(true).front() + "'" + see;
   }
   std::string text = error.what();
   // Validators of CLI11 can print limits of 309 digits.
@@ -120,14 +125,18 @@ int run_program(int argc, char** argv) {
   program.fallthrough();
   program.require_subcommand(0, 1);
   program.set_help_flag("-h,--help", "Print this help and leave");
-  program.set_version_flag("--version", "softsill " SOFTSILL_VERSION,
-                           "Print the version and leave");
-  program.add_flag("-q,--quiet", session.quiet, "Errors only")->group("Everywhere");
+  program
+      .set_version_flag("--version", "softsill " SOFTSILL_VERSION, "Print the version and leave")
+      ->group(HelpText::everywhere_group);
+  program.add_flag("-q,--quiet", session.quiet, "Errors only")->group(HelpText::everywhere_group);
   program.add_flag("--json", session.json, "Results on stdout as one JSON document")
-      ->group("Everywhere");
+      ->group(HelpText::everywhere_group);
   add_check(program, session);
   add_fit(program, session);
   add_simulate(program, session);
+  program.get_subcommand("check")->group("Look at a recording");
+  program.get_subcommand("fit")->group("Estimate and use a model");
+  program.get_subcommand("simulate")->group("Estimate and use a model");
   program.footer(
       "Exit status: 0 done, 1 data or file error, 2 usage, 3 finished but the estimate is not to "
       "be\n"

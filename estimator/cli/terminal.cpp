@@ -26,16 +26,6 @@ std::string padded(const std::string& text, std::size_t width, Table::Align alig
   return align == Table::Align::right ? fill + text : text + fill;
 }
 
-std::string with_decimals(double value, int decimals) {
-  char text[64];
-  std::snprintf(text, sizeof text, "%.*f", decimals, value);
-  // "-0.00" would claim a sign that the digits do not show.
-  if (text[0] == '-' && std::string_view(text).find_first_of("123456789") == std::string::npos) {
-    return text + 1;
-  }
-  return text;
-}
-
 }  // namespace
 
 std::size_t width_of(std::string_view text) {
@@ -110,6 +100,16 @@ std::string Table::str(std::size_t indent) const {
   return out;
 }
 
+std::string fixed(double value, int decimals) {
+  char text[64];
+  std::snprintf(text, sizeof text, "%.*f", decimals, value);
+  // "-0.00" would claim a sign that the digits do not show.
+  if (text[0] == '-' && std::string_view(text).find_first_of("123456789") == std::string::npos) {
+    return text + 1;
+  }
+  return text;
+}
+
 std::string significant(double value, int digits) {
   if (value == 0.0) {
     return "0";
@@ -120,7 +120,7 @@ std::string significant(double value, int digits) {
     std::snprintf(text, sizeof text, "%.*g", digits, value);
     return text;
   }
-  return with_decimals(value, std::max(0, digits - 1 - magnitude));
+  return fixed(value, std::max(0, digits - 1 - magnitude));
 }
 
 QuantityText quantity_text(const Quantity& quantity) {
@@ -139,12 +139,12 @@ QuantityText quantity_text(const Quantity& quantity) {
   }
   const int decimals =
       std::clamp(digits - 1 - static_cast<int>(std::floor(std::log10(ruler))), 0, 8);
-  text.value = with_decimals(*quantity.value, decimals);
+  text.value = fixed(*quantity.value, decimals);
   if (quantity.low) {
-    text.low = with_decimals(*quantity.low, decimals);
+    text.low = fixed(*quantity.low, decimals);
   }
   if (quantity.high) {
-    text.high = with_decimals(*quantity.high, decimals);
+    text.high = fixed(*quantity.high, decimals);
   }
   return text;
 }

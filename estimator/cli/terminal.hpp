@@ -44,6 +44,8 @@ class Table {
   std::vector<std::vector<std::string>> rows_;
 };
 
+/// A number with so many decimals; never "-0.00".
+std::string fixed(double value, int decimals);
 /// A number with so many significant digits, without exponent where that stays short.
 std::string significant(double value, int digits = 3);
 /// Value and ends of an interval as three texts with the same number of decimals, chosen so that

@@ -74,7 +74,7 @@ class FitCommand(unittest.TestCase):
         for line in result.stdout.splitlines():
             self.assertLessEqual(len(line), 100, line)
         for words in ("noise level Delta", "threshold theta_0", "resting potential E_0",
-                      "input resistance", "kappa consistency", "detected from the potential",
+                      "input resistance", "kappa consistency", "found by",
                       os.path.join(self.out, "estimate.json")):
             self.assertIn(words, result.stdout)
 
