@@ -9,6 +9,7 @@
 #include <string>
 #include <thread>
 
+#include "estimator/model/driving.hpp"
 #include "estimator/model/steady_exp.hpp"
 #include "estimator/model/trial.hpp"
 #include "softsill/error.hpp"
@@ -110,53 +111,8 @@ void check(const Model& model, const DrivingInput& driving, const SimulationOpti
   }
 }
 
-/// The grid of steps over an input; the last step may stick out past the end.
-struct Grid {
-  double start_ms, end_ms, step_ms;
-  std::size_t steps;
-
-  Grid(const DrivingInput& driving, double step)
-      : start_ms(driving.start_ms), end_ms(driving.end_ms()), step_ms(step) {
-    // An input of 0.3 ms holds three steps of 0.1 ms, whatever the last bits say.
-    const double exact = static_cast<double>(driving.input.size()) * driving.step_ms / step;
-    steps = std::max<std::size_t>(1, static_cast<std::size_t>(std::ceil(exact - 1e-6)));
-  }
-  double middle(std::size_t i) const {
-    return std::min(start_ms + (static_cast<double>(i) + 0.5) * step_ms, end_ms);
-  }
-};
-
-/// Lag beyond which a kernel no longer reaches: exp(-40) for exponentials.
-double reach_of(const Kernel& kernel) {
-  return kernel.basis.family == KernelFamily::exponentials ? kernel.basis.support_ms * 40.0 / 7.0
-                                                           : kernel.basis.support_ms;
-}
-
-/// (kappa * I) at the middles of steps begin .. end - 1, from that stretch of input alone.
-std::vector<double> input_effect(const Kernel& kappa, const DrivingInput& driving, const Grid& grid,
-                                 std::size_t begin, std::size_t end) {
-  if (!kappa.present()) {
-    return std::vector<double>(end - begin, 0.0);
-  }
-  std::vector<double> times;
-  for (std::size_t i = begin; i < end; ++i) {
-    times.push_back(grid.middle(i));
-  }
-  const auto samples = static_cast<double>(driving.input.size());
-  const auto sample = [&](double t_ms) {
-    return static_cast<std::size_t>(
-        std::clamp((t_ms - driving.start_ms) / driving.step_ms, 0.0, samples));
-  };
-  const std::size_t from = sample(times.front() - reach_of(kappa) - driving.step_ms);
-  const std::size_t to = std::min(driving.input.size(), sample(times.back() + driving.step_ms) + 1);
-  const double before = from == 0 ? driving.before : driving.input[from - 1];
-  return filtered_input(kappa, driving.input.subspan(from, to - from),
-                        driving.start_ms + static_cast<double>(from) * driving.step_ms,
-                        driving.step_ms, before, times);
-}
-
-std::vector<double> make_drive(const Model& model, const DrivingInput& driving, const Grid& grid,
-                               int threads) {
+std::vector<double> make_drive(const Model& model, const DrivingInput& driving,
+                               const StepGrid& grid, int threads) {
   std::vector<double> drive(grid.steps);
   const double gap = model.resting_potential - model.threshold;
   const double per_step = model.escape.lambda_0_per_ms * grid.step_ms;
@@ -175,7 +131,7 @@ std::vector<double> make_drive(const Model& model, const DrivingInput& driving, 
   return drive;
 }
 
-TrialPlan make_plan(const Model& model, const DrivingInput& driving, const Grid& grid,
+TrialPlan make_plan(const Model& model, const DrivingInput& driving, const StepGrid& grid,
                     const SimulationOptions& options) {
   TrialPlan plan;
   plan.start_ms = grid.start_ms;
@@ -208,9 +164,9 @@ TrialPlan make_plan(const Model& model, const DrivingInput& driving, const Grid&
 }
 
 /// E_0 + kappa * I + mean over trials of the summed eta, at the middles of the steps.
-std::vector<double> mean_voltage(const Model& model, const DrivingInput& driving, const Grid& grid,
-                                 const std::vector<double>& pooled_spikes, double trials,
-                                 int threads) {
+std::vector<double> mean_voltage(const Model& model, const DrivingInput& driving,
+                                 const StepGrid& grid, const std::vector<double>& pooled_spikes,
+                                 double trials, int threads) {
   std::vector<double> voltage(grid.steps);
   std::unique_ptr<HistoryTables> table;
   if (model.eta.present() && model.eta.basis.family != KernelFamily::exponentials) {
@@ -270,7 +226,7 @@ std::vector<double> mean_voltage(const Model& model, const DrivingInput& driving
 SimulationResult simulate(const Model& model, const DrivingInput& driving,
                           const SimulationOptions& options) {
   check(model, driving, options);
-  const Grid grid(driving, options.step_ms);
+  const StepGrid grid(driving, options.step_ms);
   const TrialPlan plan = make_plan(model, driving, grid, options);
 
   SimulationResult result;
