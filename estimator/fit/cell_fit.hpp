@@ -23,8 +23,8 @@ struct CellFit {
   std::unique_ptr<CellObjective> likelihood;
   std::unique_ptr<Penalised> penalised;
   Minimum minimum;
-  std::vector<Penalty> pilot_penalties;   ///< as the spikes-alone pilot left them
-  std::vector<bool> fixed;  ///< coordinates held at an edge
+  std::vector<Penalty> pilot_penalties;  ///< as the spikes-alone pilot left them
+  std::vector<bool> fixed;               ///< coordinates held at an edge
   double log_marginal = 0.0;
   bool smoothing_settled = true;
   int starts = 1, starts_agreeing = 1;
@@ -80,10 +80,11 @@ class Reading {
   double anchor_error_ = 0.0;
 };
 
-/// Plausible coefficients from a spikes-alone pilot and (joint) the potential alone.
+/// Plausible coefficients from a spikes-alone pilot and (joint) the potential alone; time constants
+/// and the escape function's own parameters are taken from `nonlinear`.
 Vector starting_values(const Coordinates& target, const Coordinates& pilot,
                        const Minimum& pilot_minimum, const VoltageFit* voltage,
-                       const Vector& pilot_predictor_at_spikes);
+                       const Vector& pilot_predictor_at_spikes, const Vector& nonlinear);
 
 /// Sets status, quantities, curves, model and bookkeeping of an estimate.
 void describe(CellFit& fit, Estimate& estimate);

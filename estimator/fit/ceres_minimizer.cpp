@@ -1,6 +1,7 @@
 #include "estimator/fit/ceres_minimizer.hpp"
 
 #include <ceres/ceres.h>
+#include <glog/logging.h>
 
 #include <cmath>
 #include <limits>
@@ -212,6 +213,8 @@ Minimum minimize(Objective& objective, const Vector& start, const MinimizerOptio
     solver.initial_trust_region_radius = 1e8;
     solver.max_num_consecutive_invalid_steps = 30;
     solver.logging_type = ceres::SILENT;
+    // Even a silent solver complains on stderr; what it has to say is in the report.
+    FLAGS_minloglevel = google::GLOG_FATAL;
     solver.num_threads = 1;
     solver.callbacks.push_back(&stop);
     solver.update_state_every_iteration = true;

@@ -10,6 +10,7 @@
 #include <vector>
 
 #include "estimator/fit/exposure.hpp"
+#include "estimator/model/exponential_responses.hpp"
 #include "softsill/kernel.hpp"
 
 namespace softsill {
@@ -40,14 +41,25 @@ struct Columns {
   void add(ColumnBlock block);
 };
 
-/// Rows at sorted times of one sweep; `out` has times_ms.size() rows of columns.width.
-/// The block Kind::current holds the driving signal itself at the time (residual series
-/// resistance).
-void fill_rows(const Columns& columns, const SweepExposure& exposure,
-               std::span<const double> times_ms, double* out);
+/// Fills rows of one sweep. What a column needs to know of the whole sweep is worked out once.
+class RowFiller {
+ public:
+  RowFiller(const Columns& columns, const SweepExposure& exposure);
 
-/// The same over several threads; result independent of `threads`.
-void fill_rows(const Columns& columns, const SweepExposure& exposure,
-               std::span<const double> times_ms, double* out, int threads);
+  /// Rows at sorted times; `out` has times_ms.size() rows of columns.width. The block Kind::current
+  /// holds the driving signal itself at the time (residual series resistance).
+  void fill(std::span<const double> times_ms, double* out) const;
+  /// The same over several threads; the result does not depend on `threads`.
+  void fill(std::span<const double> times_ms, double* out, int threads) const;
+
+ private:
+  void fill_exponentials(const ColumnBlock& block, std::span<const double> times_ms,
+                         double* out) const;
+
+  const Columns& columns_;
+  const SweepExposure& exposure_;
+  /// Of input exponentials, per block and time constant.
+  std::vector<std::vector<ExponentialCheckpoints>> checkpoints_;
+};
 
 }  // namespace softsill

@@ -2,345 +2,20 @@
 
 #include <algorithm>
 #include <cmath>
-#include <numeric>
 
-#include "estimator/fit/cell_fit.hpp"
+#include "estimator/fit/fit_steps.hpp"
 #include "estimator/fit/parallel.hpp"
 #include "estimator/fit/smoothing.hpp"
 #include "softsill/error.hpp"
 #include "softsill/quality.hpp"
-#include "softsill/random.hpp"
 
 namespace softsill {
 namespace {
 
-constexpr double pilot_cell_ms = 2.0;
-constexpr double change_per_cell = 1.0;          // of log hazard within one two-point cell
-constexpr double allowed_integral_error = 0.02;  // times sqrt(spikes)
-constexpr double allowed_shift = 0.05;           // standard errors
-constexpr int most_refinements = 4;
-constexpr double same_optimum = 1e-3;     // nats
-constexpr double separated_ridge = 0.04;  // prior sd of 5 units of Delta
-
-/// Throws out of nested numerical work when the user stops the fit.
-struct Interrupted {};
-
-/// Progress in the user's terms; throws Interrupted.
-class Progress {
- public:
-  explicit Progress(const FitOptions& options) : options_(options) {}
-  void at(double share, const std::string& words) {
-    share_ = share;
-    words_ = words;
-    tick();
-  }
-  void tick() {
-    if (options_.progress && !options_.progress(share_, words_)) {
-      stopped_ = true;
-    }
-    if (stopped_) {
-      throw Interrupted{};
-    }
-  }
-  /// For callbacks that must not throw.
-  bool keep_going() {
-    if (options_.progress && !options_.progress(share_, words_)) {
-      stopped_ = true;
-    }
-    return !stopped_;
-  }
-
- private:
-  const FitOptions& options_;
-  double share_ = 0.0;
-  std::string words_;
-  bool stopped_ = false;
-};
+constexpr double change_per_cell = 1.0;  // of log hazard within one two-point cell
 
 double block_length_ms(const Coordinates& coordinates) {
   return std::max(1000.0, coordinates.support_ms());
-}
-
-/// Smoothing parameters that start near the data's own scale.
-std::vector<Penalty> penalties_for(const Coordinates& coordinates, const Matrix& information) {
-  std::vector<Penalty> penalties;
-  for (const KernelPart& part : coordinates.parts()) {
-    if (!part.penalised()) {
-      continue;
-    }
-    Penalty penalty = roughness_penalty(part.name, part.first, part.size());
-    const auto first = static_cast<Eigen::Index>(part.first);
-    const auto n = static_cast<Eigen::Index>(part.size());
-    penalty.lambda = std::max(
-        1e-8, 1e-2 * information.block(first, first, n, n).trace() / penalty.matrix.trace());
-    penalties.push_back(std::move(penalty));
-  }
-  return penalties;
-}
-
-/// The pilot's smoothing is a better start than a guess. Its kappa is kappa / Delta.
-void take_pilot_smoothing(const std::vector<Penalty>& pilot, const Coordinates& coordinates,
-                          const Vector& start, std::vector<Penalty>& penalties) {
-  const double b = coordinates.joint() ? start[coordinates.index("b")] : 1.0;
-  for (Penalty& penalty : penalties) {
-    for (const Penalty& from : pilot) {
-      const bool history = from.name == "eta_minus_theta_1" && penalty.name != "kappa";
-      if (from.matrix.rows() == penalty.matrix.rows() && from.chosen &&
-          (from.name == penalty.name || history)) {
-        // Coefficients in mV are b times smaller in units of Delta.
-        penalty.lambda = from.lambda * (penalty.name == "theta_1" ? 1.0 : b * b);
-      }
-    }
-  }
-}
-
-void set_given_smoothing(const SmoothingPlan& plan, std::vector<Penalty>& penalties) {
-  for (Penalty& penalty : penalties) {
-    penalty.chosen = plan.automatic;
-    if (!plan.automatic) {
-      penalty.lambda = penalty.name == "kappa"     ? plan.kappa
-                       : penalty.name == "theta_1" ? plan.theta_1
-                                                   : plan.eta;
-    }
-  }
-}
-
-/// Unpenalised after-spike columns that no spike ever falls into would run to minus infinity. Each
-/// gets a weak ridge; returns how many.
-int bound_separated_columns(const CellObjective& objective, std::vector<Penalty>& penalties) {
-  int found = 0;
-  const Coordinates& coordinates = objective.coordinates();
-  for (const KernelPart& part : coordinates.parts()) {
-    if (part.name == "kappa" || part.penalised()) {
-      continue;
-    }
-    const auto first = static_cast<Eigen::Index>(
-        coordinates.spike_columns().blocks[static_cast<std::size_t>(part.spike_block)].first);
-    for (std::size_t j = 0; j < part.size(); ++j) {
-      const auto column = first + static_cast<Eigen::Index>(j);
-      if (objective.design().spikes.col(column).cwiseAbs().sum() > 0.0 ||
-          objective.design().nodes.col(column).cwiseAbs().sum() == 0.0) {
-        continue;
-      }
-      Penalty ridge;
-      ridge.name = part.name + " (no spikes there)";
-      ridge.first = part.first + j;
-      ridge.matrix = Matrix::Identity(1, 1);
-      ridge.lambda = separated_ridge;
-      ridge.rank = 1;
-      ridge.chosen = false;
-      penalties.push_back(std::move(ridge));
-      ++found;
-    }
-  }
-  return found;
-}
-
-/// A spikes-alone fit with the exponential escape on coarse nodes: concave, quick, and good enough
-/// to say where the hazard is and where to start.
-struct Pilot {
-  std::unique_ptr<CellObjective> objective;
-  Minimum minimum;
-  std::vector<Penalty> penalties;
-  Vector at_nodes, at_spikes;  ///< log hazard
-};
-
-Pilot run_pilot(const Variant& variant, const Exposure& exposure, int threads, Progress& progress) {
-  Variant simple = variant;
-  simple.escape = Escape{};
-  simple.fit_lambda_0 = simple.fit_exponent = false;
-  for (KernelPlan* plan : {&simple.kappa, &simple.eta, &simple.theta_1}) {
-    plan->fit_time_constants = false;
-  }
-  Pilot pilot;
-  NodePlan plan{&exposure, place_nodes(graded_cells(exposure, pilot_cell_ms, CellRule::midpoint)),
-                1000.0};
-  pilot.objective = std::make_unique<CellObjective>(Coordinates(simple, false, false),
-                                                    std::move(plan), VoltageStatistics{}, threads);
-  Vector start = pilot.objective->coordinates().neutral_start();
-  start[0] = std::log(static_cast<double>(exposure.spikes) / exposure.at_risk_ms);
-  const Matrix information = pilot.objective->evaluate(start, Want::derivatives).hessian;
-  std::vector<Penalty> penalties = penalties_for(pilot.objective->coordinates(), information);
-  bound_separated_columns(*pilot.objective, penalties);
-  Penalised penalised(*pilot.objective, penalties);
-  SmoothingOptions options;
-  options.rounds = 3;
-  options.minimizer.decrement = 1e-3;  // a pilot needs no more
-  options.minimizer.keep_going = [&] { return progress.keep_going(); };
-  pilot.minimum = choose_smoothing(penalised, start, options).minimum;
-  pilot.penalties = penalised.penalties();
-  progress.tick();
-  const Mapped mapped = pilot.objective->coordinates().map(pilot.minimum.theta);
-  pilot.at_nodes = pilot.objective->design().nodes * mapped.beta;
-  pilot.at_spikes = pilot.objective->design().spikes * mapped.beta;
-  return pilot;
-}
-
-/// Moves what makes the likelihood non-concave, with a stream of its own per start.
-Vector scattered_start(const Coordinates& coordinates, const Vector& best, std::uint64_t seed,
-                       int index) {
-  RandomStream random(seed, static_cast<std::uint64_t>(index));
-  Vector theta = best;
-  for (std::size_t i = 0; i < coordinates.size(); ++i) {
-    const std::string& name = coordinates.names()[i];
-    const auto at = static_cast<Eigen::Index>(i);
-    if (coordinates.is_time_constant(i)) {
-      theta[at] = coordinates.neutral_start()[at] + 1.0 * random.normal();
-    } else if (name == "b") {
-      theta[at] *= std::exp(0.5 * random.normal());
-    } else if (name == "log_lambda_0" || name == "log_exponent") {
-      theta[at] += 0.5 * random.normal();
-    }
-  }
-  return theta;
-}
-
-/// Coordinates that ran to an edge are held there and the rest fitted again.
-void hold_edges(CellFit& fit) {
-  for (int round = 0; round < 3; ++round) {
-    bool any = false;
-    for (std::size_t i = 0; i < fit.coordinates().size(); ++i) {
-      if (!fit.fixed[i] &&
-          fit.coordinates().at_edge(i, fit.minimum.theta[static_cast<Eigen::Index>(i)])) {
-        fit.fixed[i] = true;
-        any = true;
-      }
-    }
-    if (!any) {
-      return;
-    }
-    fit.minimum = minimize(*fit.penalised, fit.minimum.theta, fit.minimizer_options());
-  }
-}
-
-bool needs_starts(const Coordinates& coordinates, const Variant& variant) {
-  return coordinates.free_time_constants() > 0 || !escape_is_concave(variant.escape.kind) ||
-         coordinates.index("log_lambda_0") >= 0 || coordinates.index("log_exponent") >= 0;
-}
-
-/// Tries further starts at the present smoothing; keeps the best and counts who agrees.
-void try_starts(CellFit& fit, Progress& progress) {
-  const int starts = needs_starts(fit.coordinates(), *fit.variant) ? fit.options->starts
-                     : fit.joint()                                 ? 2
-                                                                   : 1;
-  std::vector<double> values = {fit.minimum.value};
-  const Vector first = fit.minimum.theta;
-  for (int i = 1; i < starts; ++i) {
-    progress.tick();
-    const Vector start = scattered_start(fit.coordinates(), first, fit.options->seed, i);
-    MinimizerOptions options = fit.minimizer_options();
-    options.decrement = 1e-6;
-    const Minimum other = minimize(*fit.penalised, start, options);
-    if (!other.finite) {
-      continue;
-    }
-    values.push_back(other.value);
-    if (other.value < fit.minimum.value - same_optimum && other.positive_definite) {
-      fit.minimum = other;
-    }
-  }
-  fit.starts = starts;
-  fit.starts_agreeing =
-      static_cast<int>(std::count_if(values.begin(), values.end(), [&](double value) {
-        return value < fit.minimum.value + same_optimum;
-      }));
-}
-
-/// Measured error of the present nodes, and which cells carry it.
-struct NodeCheck {
-  NodeError error;
-  std::vector<double> cell_difference;  ///< expected spikes, finer minus present
-};
-
-Vector rates_at(const SpikeDesign& design, const Mapped& m) {
-  Vector rate = design.nodes * m.beta;
-  for (double& x : rate) {
-    x = escape_rate(m.escape, x);
-  }
-  return rate;
-}
-
-/// Compares the nodes with finer ones everywhere, at the present estimate.
-NodeCheck check_nodes(CellFit& fit) {
-  CellObjective& likelihood = *fit.likelihood;
-  const Mapped m = likelihood.coordinates().map(fit.minimum.theta);
-  NodePlan plan = likelihood.plan();
-  plan.nodes = place_nodes(finer_cells(plan.nodes.cells));
-  const SpikeDesign finer =
-      make_design(likelihood.coordinates().spike_columns(), plan, likelihood.threads());
-  const Vector coarse_rate = rates_at(likelihood.design(), m), fine_rate = rates_at(finer, m);
-  const std::vector<double> coarse = cell_integrals(likelihood.plan().nodes, coarse_rate);
-  const std::vector<double> fine = cell_integrals(plan.nodes, fine_rate);
-  NodeCheck check;
-  check.cell_difference = coarse;
-  std::size_t part = 0, index = 0;
-  double total = 0.0;
-  for (const SweepCells& sweep : likelihood.plan().nodes.cells) {
-    for (const Cell& cell : sweep) {
-      double sum = fine[part++];
-      if (cell.rule == CellRule::two_point) {
-        sum += fine[part++];
-      }
-      check.cell_difference[index] = sum - coarse[index];
-      total += check.cell_difference[index++];
-    }
-  }
-  check.error.nodes = likelihood.plan().nodes.size();
-  check.error.expected_spikes_error = std::abs(total);
-  check.error.allowed =
-      allowed_integral_error * std::sqrt(static_cast<double>(fit.exposure.spikes));
-  // The same spikes are in both, so scores differ by the integrals' derivatives alone.
-  auto score = [&](const SpikeDesign& design) {
-    return evaluate_spikes(design, m.escape, m.beta, Want::gradient, likelihood.threads()).gradient;
-  };
-  const Vector shift =
-      fit.covariance * (m.beta_jacobian.transpose() * (score(finer) - score(likelihood.design())));
-  for (Eigen::Index i = 0; i < shift.size(); ++i) {
-    if (fit.covariance(i, i) > 0.0) {
-      check.error.largest_shift_in_se = std::max(
-          check.error.largest_shift_in_se, std::abs(shift[i]) / std::sqrt(fit.covariance(i, i)));
-    }
-  }
-  return check;
-}
-
-/// The cells with the largest errors, so that the rest together stays far below what is allowed.
-std::vector<bool> worst_cells(const NodeCheck& check) {
-  const std::size_t n = check.cell_difference.size();
-  std::vector<std::size_t> order(n);
-  std::iota(order.begin(), order.end(), std::size_t{0});
-  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) {
-    return std::abs(check.cell_difference[a]) < std::abs(check.cell_difference[b]);
-  });
-  std::vector<bool> chosen(n, false);
-  double kept = 0.0;
-  for (std::size_t i = 0; i < n; ++i) {
-    kept += std::abs(check.cell_difference[order[i]]);
-    // At least the worst eighth goes, for errors of the score that cancel in the integral.
-    chosen[order[i]] = kept > 0.2 * check.error.allowed || i >= n - n / 8;
-  }
-  return chosen;
-}
-
-/// Refines the nodes until their measured error is small, fitting again each time.
-void settle_nodes(CellFit& fit, Progress& progress) {
-  for (int round = 0;; ++round) {
-    progress.tick();
-    fit.covariance = inverse_information(fit.minimum.hessian, fit.fixed);
-    const NodeCheck check = check_nodes(fit);
-    fit.node_error = check.error;
-    const bool good = fit.node_error.expected_spikes_error <= fit.node_error.allowed &&
-                      fit.node_error.largest_shift_in_se <= allowed_shift;
-    if (good || round == most_refinements) {
-      return;
-    }
-    fit.likelihood->set_nodes(
-        place_nodes(finer_cells(fit.likelihood->plan().nodes.cells, worst_cells(check))));
-    fit.minimum = minimize(*fit.penalised, fit.minimum.theta, fit.minimizer_options());
-    if (!fit.minimum.finite) {
-      return;
-    }
-  }
 }
 
 FitStatus status_of(const CellFit& fit) {
@@ -375,46 +50,22 @@ void fill_bookkeeping(const CellFit& fit, Estimate& estimate) {
   estimate.constant_rate_log_likelihood = n * std::log(n / exposure.at_risk_ms) - n;
 }
 
-/// The whole maximisation: start, smoothing, starts, nodes, edges.
-void maximise(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progress& progress) {
+/// The likelihood of a cell on nodes placed by the pilot.
+void build_likelihood(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progress& progress) {
   const Variant& variant = *fit.variant;
-  const FitOptions& options = *fit.options;
-  const int threads = thread_count(options.threads);
+  const int threads = thread_count(fit.options->threads);
   const bool joint = variant.use_voltage && fit.recording->has_voltage();
   Coordinates coordinates(variant, joint, joint && fit.recording->series_resistance.fit);
   const double block_ms = block_length_ms(coordinates);
-  VoltageStatistics statistics;
-  VoltageFit voltage_fit;
-  auto gather = [&](const Columns& columns) {
+  // Outlives this function inside the objective, hence copies.
+  auto gather = [&fit, &variant, lead_in_ms, block_ms, threads](const Columns& columns) {
     return gather_voltage(columns, fit.exposure, *fit.recording, variant, lead_in_ms, block_ms,
                           threads);
   };
+  VoltageStatistics statistics;
   if (joint) {
     progress.at(0.2, "reading the potential");
     statistics = gather(coordinates.voltage_columns());
-    const auto width = static_cast<Eigen::Index>(coordinates.voltage_columns().width);
-    Matrix penalty = Matrix::Zero(width, width);
-    for (const KernelPart& part : coordinates.parts()) {
-      if (part.penalised() && part.voltage_block >= 0) {
-        const Penalty rough = roughness_penalty(part.name, 0, part.size());
-        const auto first =
-            static_cast<Eigen::Index>(coordinates.voltage_columns()
-                                          .blocks[static_cast<std::size_t>(part.voltage_block)]
-                                          .first);
-        const auto n = static_cast<Eigen::Index>(part.size());
-        penalty.block(first, first, n, n) =
-            1e-4 * statistics.total.mean.block(first, first, n, n).trace() / rough.matrix.trace() *
-            rough.matrix;
-      }
-    }
-    // Columns of derivatives have no coefficient of their own.
-    for (const ColumnBlock& block : coordinates.voltage_columns().blocks) {
-      for (std::size_t j = block.functions(); j < block.width(); ++j) {
-        const auto at = static_cast<Eigen::Index>(block.first + j);
-        penalty(at, at) = 1e12 * (1.0 + statistics.total.mean(at, at));
-      }
-    }
-    voltage_fit = fit_voltage(statistics, penalty);
   }
   progress.at(0.3, "placing nodes");
   NodePlan plan{
@@ -422,26 +73,28 @@ void maximise(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progress& pro
       place_nodes(refined_cells(pilot.objective->plan().nodes, pilot.at_nodes, change_per_cell,
                                 static_cast<double>(fit.exposure.spikes))),
       block_ms};
-  const Vector start = starting_values(coordinates, pilot.objective->coordinates(), pilot.minimum,
-                                       &voltage_fit, pilot.at_spikes);
   fit.fixed.assign(coordinates.size(), false);
   fit.likelihood = std::make_unique<CellObjective>(std::move(coordinates), std::move(plan),
                                                    std::move(statistics), threads);
   if (joint && fit.coordinates().free_time_constants() > 0) {
     fit.likelihood->set_voltage_gatherer(gather);
   }
+}
+
+/// Start, starts, smoothing, edges, nodes.
+void maximise(CellFit& fit, const Pilot& pilot, Progress& progress) {
   progress.at(0.4, "maximising the likelihood");
+  Vector start = fresh_start(fit, pilot, fit.coordinates().neutral_start());
   const Matrix information =
       fit.likelihood->evaluate(start, Want::derivatives_and_expected).expected;
   std::vector<Penalty> penalties = penalties_for(fit.coordinates(), information);
-  take_pilot_smoothing(pilot.penalties, fit.coordinates(), start, penalties);
-  set_given_smoothing(variant.smoothing, penalties);
-  bound_separated_columns(*fit.likelihood, penalties);
+  prepare_penalties(fit, pilot, start, penalties);
   fit.penalised = std::make_unique<Penalised>(*fit.likelihood, std::move(penalties));
-  const bool many = needs_starts(fit.coordinates(), variant);
+  start = threshold_first(fit, start);
+  const bool many = needs_starts(fit.coordinates(), *fit.variant);
   if (many) {
-    fit.minimum = minimize(*fit.penalised, start, fit.minimizer_options());
-    try_starts(fit, progress);
+    try_starts(fit, pilot, start, progress);
+    start = fit.minimum.theta;
   }
   progress.at(0.5, "choosing the smoothing");
   SmoothingOptions smoothing;
@@ -450,20 +103,20 @@ void maximise(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progress& pro
     progress.at(0.5 + 0.3 * (1.0 - std::exp(-round / 5.0)), "choosing the smoothing");
     return true;
   };
-  const Smoothed smoothed =
-      choose_smoothing(*fit.penalised, many ? fit.minimum.theta : start, smoothing);
+  const Smoothed smoothed = choose_smoothing(*fit.penalised, start, smoothing);
   fit.minimum = smoothed.minimum;
   fit.smoothing_settled = smoothed.settled;
-  if (fit.minimum.finite) {
-    hold_edges(fit);
-    progress.at(0.85, "checking the nodes");
-    settle_nodes(fit, progress);
-    if (!many) {
-      try_starts(fit, progress);
-    }
-    if (fit.minimum.positive_definite) {
-      fit.log_marginal = log_marginal_likelihood(*fit.penalised, fit.minimum);
-    }
+  if (!fit.minimum.finite) {
+    return;
+  }
+  hold_edges(fit);
+  progress.at(0.85, "checking the nodes");
+  settle_nodes(fit, progress);
+  if (!many && fit.joint()) {
+    try_other_softness(fit);
+  }
+  if (fit.minimum.positive_definite) {
+    fit.log_marginal = log_marginal_likelihood(*fit.penalised, fit.minimum);
   }
 }
 
@@ -480,6 +133,25 @@ void check_variant(const Variant& variant, const Recording& recording) {
 }
 
 }  // namespace
+
+void Progress::at(double share, const std::string& words) {
+  share_ = share;
+  words_ = words;
+  tick();
+}
+
+void Progress::tick() {
+  if (!keep_going()) {
+    throw Interrupted{};
+  }
+}
+
+bool Progress::keep_going() {
+  if (options_.progress && !options_.progress(share_, words_)) {
+    stopped_ = true;
+  }
+  return !stopped_;
+}
 
 MinimizerOptions CellFit::minimizer_options() const {
   MinimizerOptions out;
@@ -518,7 +190,8 @@ Estimate fit(const Recording& recording, const Variant& variant, const FitOption
       return estimate;
     }
     work.pilot_penalties = pilot.penalties;
-    maximise(work, pilot, options.before ? 0.0 : lead_in, progress);
+    build_likelihood(work, pilot, options.before ? 0.0 : lead_in, progress);
+    maximise(work, pilot, progress);
     fill_bookkeeping(work, estimate);
     if (estimate.status != FitStatus::failed && estimate.status != FitStatus::interrupted) {
       progress.at(0.9, "intervals");

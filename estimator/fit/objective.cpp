@@ -68,8 +68,9 @@ SpikeDesign make_design(const Columns& columns, const NodePlan& plan, int thread
   for (std::size_t i = 0; i < plan.exposure->sweeps.size(); ++i) {
     const SweepExposure& part = plan.exposure->sweeps[i];
     const std::vector<double>& times = plan.nodes.times_ms[i];
-    fill_rows(columns, part, times, design.nodes.data() + node * width, threads);
-    fill_rows(columns, part, part.spikes_ms, design.spikes.data() + spike * width, threads);
+    const RowFiller filler(columns, part);
+    filler.fill(times, design.nodes.data() + node * width, threads);
+    filler.fill(part.spikes_ms, design.spikes.data() + spike * width, threads);
     auto block_of = [&](double t) {
       return first_block + static_cast<int>((t - part.sweep->start_ms) / plan.block_ms);
     };

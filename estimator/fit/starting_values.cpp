@@ -70,8 +70,14 @@ Vector coefficients_of(const Vector& theta, const KernelPart& part) {
 
 Vector starting_values(const Coordinates& target, const Coordinates& pilot,
                        const Minimum& pilot_minimum, const VoltageFit* voltage,
-                       const Vector& pilot_predictor_at_spikes) {
+                       const Vector& pilot_predictor_at_spikes, const Vector& nonlinear) {
   Vector theta = target.neutral_start();
+  for (std::size_t i = 0; i < target.size(); ++i) {
+    const std::string& name = target.names()[i];
+    if (target.is_time_constant(i) || name == "log_lambda_0" || name == "log_exponent") {
+      theta[static_cast<Eigen::Index>(i)] = nonlinear[static_cast<Eigen::Index>(i)];
+    }
+  }
   const Escape escape = target.map(theta).escape;
   const EscapeMap escape_map = map_from_exponential(escape, pilot_predictor_at_spikes.mean());
   const Vector& found = pilot_minimum.theta;
@@ -109,10 +115,14 @@ Vector starting_values(const Coordinates& target, const Coordinates& pilot,
                      project(by_spikes->basis, coefficients_of(found, *by_spikes), kappa->basis);
     const Vector mv = coefficients_of(theta, *kappa);
     const auto n = static_cast<Eigen::Index>(kappa->size());
-    Matrix metric = Matrix::Identity(n, n);
-    if (by_spikes->size() == kappa->size()) {
-      const auto first = static_cast<Eigen::Index>(by_spikes->first);
-      metric = pilot_minimum.hessian.block(first, first, n, n);
+    // Both curves as functions of the lag, weighted by the lag they stand for.
+    const std::vector<double> lags = comparison_lags(kappa->basis.support_ms);
+    Matrix metric = Matrix::Zero(n, n);
+    std::vector<double> at(kappa->size());
+    for (std::size_t i = 0; i + 1 < lags.size(); ++i) {
+      kappa->basis.values(lags[i], at);
+      const Eigen::Map<const Vector> phi(at.data(), n);
+      metric += (lags[i + 1] - lags[i]) * phi * phi.transpose();
     }
     const double ratio = mv.dot(metric * k) / mv.dot(metric * mv);
     // Spikes that do not follow the input leave b near 0; the gate will say so.

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <memory>
 #include <numbers>
 
 #include "estimator/fit/parallel.hpp"
@@ -112,6 +113,7 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
   double sum = 0.0, samples = 0.0;
   struct Piece {
     const SweepExposure* part;
+    std::shared_ptr<const RowFiller> filler;
     std::vector<Run> runs;
     std::size_t stride;
   };
@@ -141,6 +143,7 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
       }
       samples += static_cast<double>(run.count);
     }
+    const auto filler = std::make_shared<const RowFiller>(columns, part);
     // One piece of work per time block, led by whether its first run continues the one before.
     for (std::size_t i = 0; i < runs.size();) {
       std::size_t end = i;
@@ -148,6 +151,7 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
         ++end;
       }
       pieces.push_back({&part,
+                        filler,
                         {runs.begin() + static_cast<std::ptrdiff_t>(i),
                          runs.begin() + static_cast<std::ptrdiff_t>(end)},
                         stride});
@@ -180,7 +184,7 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
       }
     }
     RowMatrix rows(static_cast<Eigen::Index>(times.size()), n - 1);
-    fill_rows(columns, *piece.part, times, rows.data());
+    piece.filler->fill(times, rows.data());
     RowMatrix z(rows.rows(), n);
     z.leftCols(n - 1) = rows;
     z.col(n - 1) = Eigen::Map<const Vector>(voltage.data(), rows.rows());

@@ -17,6 +17,11 @@ Moments decayed(const Moments& now, double lag, double tau) {
           fall * (now[2] + lag * (2.0 * now[1] + lag * now[0]))};
 }
 
+/// exp(-60) of anything earlier is below the rounding of what follows, even times s^2.
+constexpr double forgotten = 60.0;
+/// Shares of a sample below which a time counts as lying on the grid.
+constexpr double on_grid = 1e-7;
+
 /// integral_0^lag s^r exp(-s / tau) ds.
 Moments window(double lag, double tau) {
   const double u = lag / tau;
@@ -38,21 +43,58 @@ Moments window(double lag, double tau) {
   return {zero, one, 2.0 * tau * one - tau * lag * lag * fall};
 }
 
+/// One held sample further.
+struct Step {
+  double length, fall;
+  Moments fresh;
+  Step(double step_ms, double tau_ms)
+      : length(step_ms), fall(std::exp(-step_ms / tau_ms)), fresh(window(step_ms, tau_ms)) {}
+  void advance(Moments& state, double input) const {
+    state[2] = fall * (state[2] + length * (2.0 * state[1] + length * state[0])) + fresh[2] * input;
+    state[1] = fall * (state[1] + length * state[0]) + fresh[1] * input;
+    state[0] = fall * state[0] + fresh[0] * input;
+  }
+};
+
+Moments held_forever(double value, double tau_ms) {
+  return {value * tau_ms, value * tau_ms * tau_ms, value * 2.0 * tau_ms * tau_ms * tau_ms};
+}
+
 }  // namespace
+
+ExponentialCheckpoints input_exponential_checkpoints(double tau_ms, std::span<const double> input,
+                                                     double step_ms, double before_value,
+                                                     std::size_t every) {
+  ExponentialCheckpoints out;
+  out.every = every;
+  const Step step(step_ms, tau_ms);
+  Moments state = held_forever(before_value, tau_ms);
+  for (std::size_t sample = 0; sample < input.size(); ++sample) {
+    if (sample % every == 0) {
+      out.states.push_back(state);
+    }
+    step.advance(state, input[sample]);
+  }
+  return out;
+}
 
 void input_exponential_moments(double tau_ms, int orders, std::span<const double> input,
                                double start_ms, double step_ms, double before_value,
-                               std::span<const double> times_ms, std::span<double> out) {
-  const Moments full = {tau_ms, tau_ms * tau_ms, 2.0 * tau_ms * tau_ms * tau_ms};
-  const Moments step = window(step_ms, tau_ms);
-  const double fall = std::exp(-step_ms / tau_ms);
-  Moments state{};
-  for (int r = 0; r < 3; ++r) {
-    state[r] = before_value * full[r];
-  }
+                               std::span<const double> times_ms, std::span<double> out,
+                               const ExponentialCheckpoints* checkpoints) {
+  const Step step(step_ms, tau_ms);
+  Moments state = held_forever(before_value, tau_ms);
   std::size_t sample = 0;
+  if (checkpoints != nullptr && !times_ms.empty() && !checkpoints->states.empty()) {
+    const double first = std::max(0.0, (times_ms.front() - start_ms) / step_ms);
+    const std::size_t at = std::min(static_cast<std::size_t>(first) / checkpoints->every,
+                                    checkpoints->states.size() - 1);
+    state = checkpoints->states[at];
+    sample = at * checkpoints->every;
+  }
   for (std::size_t i = 0; i < times_ms.size(); ++i) {
-    const double position = (times_ms[i] - start_ms) / step_ms;
+    // A time on the grid, up to rounding, is the start of its sample.
+    const double position = (times_ms[i] - start_ms) / step_ms + on_grid;
     const auto target = static_cast<std::size_t>(
         std::clamp(std::floor(position), 0.0, static_cast<double>(input.size())));
     if (target < sample) {
@@ -60,19 +102,16 @@ void input_exponential_moments(double tau_ms, int orders, std::span<const double
     }
     if (orders == 1) {
       for (; sample < target; ++sample) {
-        state[0] = fall * state[0] + step[0] * input[sample];
+        state[0] = step.fall * state[0] + step.fresh[0] * input[sample];
       }
     } else {
       for (; sample < target; ++sample) {
-        state[2] = fall * (state[2] + step_ms * (2.0 * state[1] + step_ms * state[0])) +
-                   step[2] * input[sample];
-        state[1] = fall * (state[1] + step_ms * state[0]) + step[1] * input[sample];
-        state[0] = fall * state[0] + step[0] * input[sample];
+        step.advance(state, input[sample]);
       }
     }
     const double rest = times_ms[i] - (start_ms + step_ms * static_cast<double>(sample));
     Moments now = state;
-    if (rest > 0.0 && sample < input.size()) {
+    if (rest > 2.0 * on_grid * step_ms && sample < input.size()) {
       now = decayed(state, rest, tau_ms);
       const Moments fresh = window(rest, tau_ms);
       for (int r = 0; r < 3; ++r) {
@@ -86,15 +125,21 @@ void input_exponential_moments(double tau_ms, int orders, std::span<const double
 void history_exponential_moments(double tau_ms, int orders, std::span<const double> spikes_ms,
                                  std::span<const double> times_ms, std::span<double> out) {
   Moments state{};
-  double at = 0.0;
-  std::size_t spike = 0;
+  if (times_ms.empty()) {
+    return;
+  }
+  auto spike =
+      std::lower_bound(spikes_ms.begin(), spikes_ms.end(), times_ms.front() - forgotten * tau_ms);
+  double at = times_ms.front();
   for (std::size_t i = 0; i < times_ms.size(); ++i) {
-    for (; spike < spikes_ms.size() && spikes_ms[spike] < times_ms[i]; ++spike) {
-      state = decayed(state, spike == 0 ? 0.0 : spikes_ms[spike] - at, tau_ms);
+    for (; spike != spikes_ms.end() && *spike < times_ms[i]; ++spike) {
+      if (state[0] > 0.0) {
+        state = decayed(state, *spike - at, tau_ms);
+      }
       state[0] += 1.0;
-      at = spikes_ms[spike];
+      at = *spike;
     }
-    const Moments now = spike == 0 ? Moments{} : decayed(state, times_ms[i] - at, tau_ms);
+    const Moments now = state[0] > 0.0 ? decayed(state, times_ms[i] - at, tau_ms) : Moments{};
     std::copy_n(now.begin(), orders, out.begin() + static_cast<std::ptrdiff_t>(i) * orders);
   }
 }

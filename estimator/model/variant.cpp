@@ -295,6 +295,8 @@ Variant::Variant() {
   kappa.first_ms = 1.0;
   kappa.count = 14;
   for (KernelPlan* plan : {&eta, &theta_1}) {
+    // A faster component has decayed before the refractory time ends.
+    plan->shortest_ms = 2.0;
     plan->support_ms = 400.0;
     plan->first_ms = 2.0;
     plan->count = 13;
