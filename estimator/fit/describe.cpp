@@ -349,8 +349,6 @@ void describe_time_constants(CellFit& fit, const Reading& reading, double z, Est
       estimate.parameters.push_back({name, quantity});
     }
   }
-  // Profiles move the time constants; bring the columns back to the maximum.
-  fit.likelihood->refresh(fit.minimum.theta);
 }
 
 void describe_rest(const CellFit& fit, const Reading& reading, double z, Estimate& estimate) {

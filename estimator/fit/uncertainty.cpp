@@ -94,6 +94,8 @@ ProfileInterval profile_interval(Objective& objective, const Minimum& minimum,
       trial = std::clamp(next, 0.05 * error, 2.0 * std::max(trial, error));
     }
   }
+  // Leave the objective (its columns follow the time constants) where it was found.
+  objective.evaluate(minimum.theta, Want::value);
   return interval;
 }
 
