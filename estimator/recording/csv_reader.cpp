@@ -6,6 +6,7 @@
 
 #include "estimator/recording/csv_rows.hpp"
 #include "estimator/recording/sampling_clock.hpp"
+#include "estimator/recording/shown_text.hpp"
 #include "estimator/recording/signal_reader.hpp"
 #include "softsill/error.hpp"
 #include "softsill/nearest_word.hpp"
@@ -62,7 +63,7 @@ void refuse_unknown_columns(const CsvRows& rows, const std::string& path,
       for (const std::string& word : known) {
         list += (list.empty() ? "" : ", ") + word;
       }
-      throw Error(path, rows.place(), "unknown column '" + name + "'",
+      throw Error(path, rows.place(), "unknown column '" + shown_text(name) + "'",
                   "did you mean " + nearest_word(name, known) + "? Known are " + list);
     }
   }

@@ -7,6 +7,7 @@
 #include <cstring>
 #include <limits>
 
+#include "estimator/recording/shown_text.hpp"
 #include "softsill/error.hpp"
 
 namespace softsill {
@@ -40,14 +41,7 @@ std::string_view trimmed(std::string_view text) {
   return text;
 }
 
-// A field as it may be shown in one line of an error message.
-std::string shown(std::string_view text) {
-  std::string result = "'";
-  for (const char c : trimmed(text).substr(0, 40)) {
-    result += static_cast<unsigned char>(c) < 0x20 || c == 0x7f ? '?' : c;
-  }
-  return result + (text.size() > 40 ? "...'" : "'");
-}
+std::string shown(std::string_view text) { return "'" + shown_text(trimmed(text)) + "'"; }
 
 }  // namespace
 

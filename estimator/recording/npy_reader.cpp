@@ -10,6 +10,7 @@
 #include <limits>
 
 #include "estimator/recording/sampling_clock.hpp"
+#include "estimator/recording/shown_text.hpp"
 #include "estimator/recording/signal_reader.hpp"
 #include "softsill/error.hpp"
 
@@ -78,7 +79,7 @@ NpyHeader read_header(ByteSource& source) {
     header.single = name == "<f4";
   } else {
     refuse_header(path, "the numbers are of type '" +
-                            std::string(name.substr(0, name.find_first_of("'\""))) +
+                            shown_text(name.substr(0, name.find_first_of("'\""))) +
                             "', not little-endian float32 or float64");
   }
   header.fortran_order = value_of(text, "fortran_order", path).substr(0, 4) == "True";

@@ -222,6 +222,24 @@ void judge_counts(const QualityReport& report, Findings& findings) {
   }
 }
 
+void judge_mixture(const Recording& recording, Findings& findings) {
+  std::size_t with = 0;
+  std::size_t all = 0;
+  for (const Sweep& sweep : recording.sweeps) {
+    if (sweep.use == Use::estimate) {
+      ++all;
+      with += sweep.has_voltage() ? 1 : 0;
+    }
+  }
+  if (with > 0 && with < all) {
+    findings.look(
+        "", "potential",
+        say("only %zu of %zu sweeps to estimate from carry it, so a fit uses spikes alone", with,
+            all),
+        "estimate from the sweeps that carry it to get everything in mV");
+  }
+}
+
 void judge_repeats(const Recording& recording, Findings& findings) {
   std::map<std::string, std::size_t> counts;
   for (const Sweep& sweep : recording.sweeps) {
@@ -390,6 +408,7 @@ QualityReport check_quality(const Recording& recording, bool anchored) {
   Findings findings(report.findings);
   judge_counts(report, findings);
   judge_sampling(report, findings);
+  judge_mixture(recording, findings);
   const bool all_constant =
       std::all_of(report.sweeps.begin(), report.sweeps.end(), [](const SweepQuality& sweep) {
         return sweep.use != Use::estimate || constant_input(sweep.input);

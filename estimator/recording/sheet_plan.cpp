@@ -2,11 +2,13 @@
 
 #include <toml++/toml.h>
 
+#include <algorithm>
 #include <cmath>
 #include <filesystem>
 #include <initializer_list>
 #include <set>
 
+#include "estimator/recording/shown_text.hpp"
 #include "softsill/error.hpp"
 #include "softsill/nearest_word.hpp"
 
@@ -33,7 +35,7 @@ class Section {
     for (const auto& [key, node] : table_) {
       if (std::find(known.begin(), known.end(), key.str()) == known.end()) {
         throw Error(path_, line_place(key.source()),
-                    "unknown key '" + where_ + std::string(key.str()) + "'",
+                    "unknown key '" + where_ + shown_text(key.str()) + "'",
                     "did you mean " + nearest_word(key.str(), known) + "?");
       }
     }
@@ -149,7 +151,7 @@ SweepPlan parse_sweep(const toml::table& table, const std::string& path, std::si
     sweep.use = Use::predict;
   } else if (!use.empty() && use != "estimate") {
     const std::initializer_list<std::string_view> known = {"estimate", "predict"};
-    section.refuse(*section.find("use"), "use", "unknown word '" + use + "'",
+    section.refuse(*section.find("use"), "use", "unknown word '" + shown_text(use) + "'",
                    "did you mean " + nearest_word(use, known) +
                        "? A sweep is there to \"estimate\" from or to \"predict\"");
   }
@@ -238,7 +240,7 @@ SheetPlan parse_sheet(const std::string& text, const std::string& path) {
     plan.sweeps.push_back(parse_sweep(*node.as_table(), path, plan.sweeps.size() + 1));
     if (!names.insert(plan.sweeps.back().name).second) {
       throw Error(path, line_place(node.source()),
-                  "a second sweep is called '" + plan.sweeps.back().name + "'",
+                  "a second sweep is called '" + shown_text(plan.sweeps.back().name) + "'",
                   "give every sweep a name of its own");
     }
   }

@@ -15,7 +15,7 @@
 ///     dead_time_ms = 1
 ///
 ///     [[sweep]]
-///     name = "s1"                        # unique
+///     name = "s1"                        # unique; default "sweep 1", "sweep 2", ...
 ///     recording = "s1.csv"               # relative to the sheet; see below
 ///     spikes = "s1_spikes.csv"           # column spike_ms; default: found in the potential
 ///     use = "estimate"                   # default; or "predict": held out, no fit sees it

@@ -123,6 +123,7 @@ TEST(Quality, knows_the_identifiability_row) {
   recording.sweeps.push_back(make_sweep(90.0, 2));
   recording.sweeps[1].voltage_mV.clear();
   EXPECT_EQ(check_quality(recording).identifiability, Identifiability::spikes_alone);
+  EXPECT_NE(find(check_quality(recording), "only 1 of 2 sweeps"), nullptr);
   recording.sweeps[1].use = Use::predict;
   EXPECT_EQ(check_quality(recording).identifiability, Identifiability::spikes_and_voltage);
 }

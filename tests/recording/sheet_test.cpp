@@ -234,6 +234,8 @@ INSTANTIATE_TEST_SUITE_P(
         BadSheet{"empty_text", "cell = ''\n" SWEEP, "line 1, cell: is an empty text"},
         BadSheet{"unknown_use", SWEEP "use = 'estimat'\n",
                  "line 4, sweep.use: unknown word 'estimat'; did you mean estimate?"},
+        BadSheet{"control_characters", SWEEP "use = \"a\\nb\"\n",
+                 "line 4, sweep.use: unknown word 'a?b'"},
         BadSheet{"same_name", SWEEP SWEEP, "line 4: a second sweep is called 'a'"},
         BadSheet{"backward_window", SWEEP "start_ms = 5\nend_ms = 5\n",
                  "line 5, sweep.end_ms: does not come after start_ms"},
