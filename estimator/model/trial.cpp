@@ -23,7 +23,13 @@ struct Product {
   }
   double amount(double drive, double effect) const { return drive * effect; }
   double amount(double drive, double effect, double carried) const {
-    return drive * effect * steady_exp(carried);
+    return drive * effect * carried;
+  }
+  /// From a sum of terms of x to what amount() takes.
+  static void prepare(std::array<double, run>& carried) {
+    for (double& value : carried) {
+      value = steady_exp(value);
+    }
   }
 };
 
@@ -35,6 +41,7 @@ struct Lookup {
   double amount(double drive, double effect, double carried) const {
     return (*table)(drive + effect + carried);
   }
+  static void prepare(std::array<double, run>&) {}
   const HazardTable* table;
 };
 
@@ -53,16 +60,16 @@ class Carried {
   bool any() const { return any_; }
 
   /// Sum over terms at the middle of every step of this run.
-  const std::array<double, run>& along_run() {
-    sum_.fill(0.0);
+  std::array<double, run> along_run() const {
+    std::array<double, run> sum{};
     for (std::size_t k = 0; k < terms_.size(); ++k) {
       const double value = value_[k];
       const double* decay = decay_.data() + k * run;
       for (std::size_t j = 0; j < run; ++j) {
-        sum_[j] += value * decay[j];
+        sum[j] += value * decay[j];
       }
     }
-    return sum_;
+    return sum;
   }
 
   /// \param steps_left from the spike to the end of its run
@@ -87,7 +94,6 @@ class Carried {
   std::span<const HistoryTables::Exponential> terms_;
   double step_ms_;
   std::vector<double> value_, pending_, decay_;
-  std::array<double, run> sum_{};
   bool any_ = false;
 };
 
@@ -138,7 +144,7 @@ class Trial {
     const double* effect = effect_.data() + (first_ - base_);
     if (carried_.any()) {
       for (std::size_t j = from; j < count_; ++j) {
-        amount_[j] = hazard_.amount(drive[j], effect[j], (*along_run_)[j]);
+        amount_[j] = hazard_.amount(drive[j], effect[j], along_run_[j]);
       }
     } else {
       for (std::size_t j = from; j < count_; ++j) {
@@ -166,7 +172,8 @@ class Trial {
   void one_run() {
     std::size_t j = next_ > first_ ? next_ - first_ : 0;
     if (carried_.any()) {
-      along_run_ = &carried_.along_run();
+      along_run_ = carried_.along_run();
+      Hazard::prepare(along_run_);
     }
     fill(j);
     amount_[j] *= 1.0 - dead_;
@@ -261,11 +268,11 @@ class Trial {
   std::size_t window_ = 0;      ///< steps after which effects are slid down
   std::vector<double> effect_;  ///< of past spikes on steps base_, base_ + 1, ...
   std::size_t base_ = 0;
-  std::size_t first_ = 0, count_ = 0;  ///< the run of steps at hand
-  std::array<double, run> amount_{};   ///< hazard integrals of its steps
-  const std::array<double, run>* along_run_ = nullptr;
-  std::size_t next_ = 0;  ///< first step that is not refractory throughout ...
-  double dead_ = 0.0;     ///< ... and the share of it that is
+  std::size_t first_ = 0, count_ = 0;    ///< the run of steps at hand
+  std::array<double, run> amount_{};     ///< hazard integrals of its steps
+  std::array<double, run> along_run_{};  ///< what exponential kernels bring into them
+  std::size_t next_ = 0;                 ///< first step that is not refractory throughout ...
+  double dead_ = 0.0;                    ///< ... and the share of it that is
   double gathered_ = 0.0, target_ = 0.0;
   bool done_ = false;
 };
