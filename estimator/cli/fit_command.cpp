@@ -86,19 +86,6 @@ void make_directory(const std::string& path) {
   }
 }
 
-bool exponentials_only(const Model& model) {
-  bool any = false;
-  for (const Kernel* kernel : {&model.kappa, &model.eta, &model.theta_1}) {
-    if (kernel->present()) {
-      if (kernel->basis.family != KernelFamily::exponentials) {
-        return false;
-      }
-      any = true;
-    }
-  }
-  return any;
-}
-
 /// Writes all files of a fit and says what each holds.
 std::string write_results(const Estimate& estimate, const std::string& directory) {
   Table files;
@@ -110,7 +97,7 @@ std::string write_results(const Estimate& estimate, const std::string& directory
   put("estimate.json", to_json(estimate), "everything, for later commands");
   put("kernels.csv", kernels_csv(estimate), "kernel, lag_ms, value, low, high, unit");
   put("parameters.csv", parameters_csv(estimate), "name, value, low, high, unit, method");
-  if (trustworthy(estimate.status) && exponentials_only(estimate.model)) {
+  if (trustworthy(estimate.status) && why_no_equations(estimate.model).empty()) {
     put("equations.csv", equations_csv(integrate_and_fire_equations(estimate.model)),
         "the same model as integrate-and-fire equations");
   } else {

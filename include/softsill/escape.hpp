@@ -17,9 +17,9 @@ enum class EscapeKind {
   logistic,         ///< f = 1 / (1 + exp(-x)); lambda_0 is the ceiling rate. Not convex.
   rectified_power,  ///< f = log(1 + exp(x))^n: a smooth [x]_+^n with exponent n > 0.
   gaussian_tail     ///< f = phi(x) / Phi(-x), the hazard of a Gaussian threshold: tail
-                    ///< exp(-x^2 / 2) far below, linear far above; convex (Sampford 1953, Ann. Math.
-                    ///< Stat. 24:130) and log-concave. Gaussian escape rates for diffusive noise:
-                    ///< Plesser & Gerstner 2000, Neural Comput. 12:367.
+                 ///< exp(-x^2 / 2) far below, linear far above; convex (Sampford 1953, Ann. Math.
+                 ///< Stat. 24:130) and log-concave. Gaussian escape rates for diffusive noise:
+                 ///< Plesser & Gerstner 2000, Neural Comput. 12:367.
 };
 
 /// An escape function with its own parameters fixed to numbers.
@@ -35,10 +35,10 @@ struct Escape {
 /// a = (log lambda_0, log n); subscripts x and n mean derivatives by x and by log n.
 /// Derivatives by log lambda_0 need no field: d lambda = lambda, d log lambda = 1.
 struct EscapeDerivatives {
-  double rate = 0, rate_x = 0, rate_xx = 0;        ///< lambda, 1/ms
-  double log = 0, log_x = 0, log_xx = 0;           ///< log(lambda * 1 ms)
-  double rate_n = 0, rate_xn = 0, rate_nn = 0;     ///< 0 unless rectified_power
-  double log_n = 0, log_xn = 0, log_nn = 0;        ///< 0 unless rectified_power
+  double rate = 0, rate_x = 0, rate_xx = 0;     ///< lambda, 1/ms
+  double log = 0, log_x = 0, log_xx = 0;        ///< log(lambda * 1 ms)
+  double rate_n = 0, rate_xn = 0, rate_nn = 0;  ///< 0 unless rectified_power
+  double log_n = 0, log_xn = 0, log_nn = 0;     ///< 0 unless rectified_power
 };
 
 /// All of the above at x. Finite for every finite x with |x| < 1e6, except that the exponential's

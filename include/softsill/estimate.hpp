@@ -17,12 +17,12 @@ namespace softsill {
 
 /// How a fit ended. Only `converged` and `at_boundary` are to be trusted.
 enum class FitStatus {
-  converged,           ///< Newton decrement under 1e-6 nats, information positive definite
-  at_boundary,         ///< the same after a parameter was held at the edge of its range
-  converged_imprecise, ///< decrement between 1e-6 and 1e-3 nats
-  not_converged,       ///< the gate failed; numbers are for diagnosis only
-  interrupted,         ///< Ctrl-C
-  failed               ///< no finite start, or the likelihood left the finite numbers
+  converged,            ///< Newton decrement under 1e-6 nats, information positive definite
+  at_boundary,          ///< the same after a parameter was held at the edge of its range
+  converged_imprecise,  ///< decrement between 1e-6 and 1e-3 nats
+  not_converged,        ///< the gate failed; numbers are for diagnosis only
+  interrupted,          ///< Ctrl-C
+  failed                ///< no finite start, or the likelihood left the finite numbers
 };
 
 /// What was recorded, and so what can be told.
@@ -41,8 +41,8 @@ struct Quantity {
   std::optional<double> value;
   std::optional<double> low, high;
   std::string unit;
-  std::string method;       ///< "profile likelihood", "observed information", "given", ...
-  std::string why_absent;   ///< set exactly when value is empty
+  std::string method;      ///< "profile likelihood", "observed information", "given", ...
+  std::string why_absent;  ///< set exactly when value is empty
 };
 
 /// A named row of parameters.csv.
@@ -53,12 +53,12 @@ struct NamedQuantity {
 
 /// A kernel on a grid of lags with pointwise 95 % bands.
 struct KernelCurve {
-  std::string kernel;   ///< "kappa", "eta", "theta_1", "eta_minus_theta_1", "kappa_by_spikes", ...
+  std::string kernel;  ///< "kappa", "eta", "theta_1", "eta_minus_theta_1", "kappa_by_spikes", ...
   std::string unit;
   std::vector<double> lag_ms, value, low, high;
-  std::string why_absent;                       ///< set when there is no such kernel to show
+  std::string why_absent;  ///< set when there is no such kernel to show
   double effective_degrees_of_freedom = 0.0;
-  std::optional<double> smoothing;              ///< smoothing parameter, splines only
+  std::optional<double> smoothing;  ///< smoothing parameter, splines only
   /// Stretches of lag where the curve is set by the smoothing, not by the data.
   std::vector<Interval> undetermined;
 };
@@ -66,9 +66,9 @@ struct KernelCurve {
 /// Measured error of the quadrature of the hazard, at the estimate.
 struct NodeError {
   std::size_t nodes = 0;
-  double expected_spikes_error = 0.0;   ///< |integral - refined integral|, spikes
-  double allowed = 0.0;                 ///< 0.02 sqrt(spikes)
-  double largest_shift_in_se = 0.0;     ///< shift of any parameter by refining, in standard errors
+  double expected_spikes_error = 0.0;  ///< |integral - refined integral|, spikes
+  double allowed = 0.0;                ///< 0.02 sqrt(spikes)
+  double largest_shift_in_se = 0.0;    ///< shift of any parameter by refining, in standard errors
 };
 
 /// Does kappa seen through the voltage agree in shape with kappa seen through the spikes?
@@ -95,36 +95,36 @@ struct Estimate {
   Variant variant;
   FitStatus status = FitStatus::failed;
   FitMode mode = FitMode::spikes_alone;
-  std::string status_sentence;       ///< one plain sentence: what the status means here
-  std::string minimizer_report;      ///< what Ceres said, for the record
-  double newton_decrement = 0.0;     ///< nats
+  std::string status_sentence;    ///< one plain sentence: what the status means here
+  std::string minimizer_report;   ///< what Ceres said, for the record
+  double newton_decrement = 0.0;  ///< nats
   int starts = 1, starts_agreeing = 1;
 
-  std::size_t spikes = 0;            ///< inside the likelihood
-  double analysed_ms = 0.0;          ///< time inside the likelihood
-  double left_out_ms = 0.0;          ///< lead-ins left out because their past is unknown
+  std::size_t spikes = 0;    ///< inside the likelihood
+  double analysed_ms = 0.0;  ///< time inside the likelihood
+  double left_out_ms = 0.0;  ///< lead-ins left out because their past is unknown
   std::size_t left_out_spikes = 0;
-  double log_likelihood = 0.0;       ///< nats, spikes and (where used) voltage, no penalty
-  double spike_log_likelihood = 0.0; ///< nats, spikes alone, rates in 1/ms
+  double log_likelihood = 0.0;                ///< nats, spikes and (where used) voltage, no penalty
+  double spike_log_likelihood = 0.0;          ///< nats, spikes alone, rates in 1/ms
   double constant_rate_log_likelihood = 0.0;  ///< nats, the best constant rate on the same time
   double log_marginal_likelihood = 0.0;       ///< Laplace evidence, nats
 
   Quantity noise_level, threshold, resting_potential;
-  std::vector<NamedQuantity> parameters;   ///< everything, for parameters.csv
-  std::vector<KernelCurve> kernels;        ///< for kernels.csv
+  std::vector<NamedQuantity> parameters;  ///< everything, for parameters.csv
+  std::vector<KernelCurve> kernels;       ///< for kernels.csv
   double effective_degrees_of_freedom = 0.0;
   NodeError node_error;
   KappaConsistency kappa_consistency;
-  std::vector<std::string> limits;         ///< plain sentences: what the data cannot tell
-  std::vector<std::string> notes;          ///< plain sentences: choices made, costs paid
+  std::vector<std::string> limits;  ///< plain sentences: what the data cannot tell
+  std::vector<std::string> notes;   ///< plain sentences: choices made, costs paid
 
   /// The point estimate as a model that can be simulated and scored.
   Model model;
   /// The fitted coordinates (names, values, row-major covariance): what the intervals come from.
   std::vector<std::string> coordinate_names;
   std::vector<double> coordinates;
-  std::vector<double> covariance;          ///< penalised observed information, inverted
-  std::vector<double> sandwich_covariance; ///< robust, over time blocks
+  std::vector<double> covariance;           ///< penalised observed information, inverted
+  std::vector<double> sandwich_covariance;  ///< robust, over time blocks
 
   Provenance provenance;
 };

@@ -30,9 +30,9 @@ KernelFamily kernel_family_from(const std::string& word);
 struct Basis {
   KernelFamily family = KernelFamily::absent;
   double support_ms = 0.0;
-  int degree = 3;                          ///< of the B-splines (spline 3, steps 0)
-  std::vector<double> knots_ms;            ///< size() + degree + 1 knots (spline, steps)
-  std::vector<double> time_constants_ms;   ///< exponentials
+  int degree = 3;                         ///< of the B-splines (spline 3, steps 0)
+  std::vector<double> knots_ms;           ///< size() + degree + 1 knots (spline, steps)
+  std::vector<double> time_constants_ms;  ///< exponentials
 
   /// Number of basis functions; 0 for an absent kernel.
   std::size_t size() const;

@@ -18,22 +18,22 @@ namespace softsill {
 
 /// In which unit potentials are expressed.
 enum class PotentialScale {
-  millivolt,      ///< voltage recorded, or an anchor given
-  noise_level     ///< units of Delta: all that spikes alone can tell. Delta = 1, E_0 = 0.
+  millivolt,   ///< voltage recorded, or an anchor given
+  noise_level  ///< units of Delta: all that spikes alone can tell. Delta = 1, E_0 = 0.
 };
 
 struct Model {
   std::string name;
   std::string input_unit = "nA";
   PotentialScale scale = PotentialScale::millivolt;
-  Kernel kappa;     ///< mV/(nA ms), or Delta/(input unit ms)
-  Kernel eta;       ///< mV; under PotentialScale::noise_level this holds (eta - theta_1) / Delta
-  Kernel theta_1;   ///< mV; absent under PotentialScale::noise_level
+  Kernel kappa;    ///< mV/(nA ms), or Delta/(input unit ms)
+  Kernel eta;      ///< mV; under PotentialScale::noise_level this holds (eta - theta_1) / Delta
+  Kernel theta_1;  ///< mV; absent under PotentialScale::noise_level
   Escape escape;
-  double resting_potential = 0.0;   ///< E_0
-  double threshold = 0.0;           ///< theta_0
-  double noise_level = 1.0;         ///< Delta
-  double refractory_ms = 0.0;       ///< t_abs
+  double resting_potential = 0.0;  ///< E_0
+  double threshold = 0.0;          ///< theta_0
+  double noise_level = 1.0;        ///< Delta
+  double refractory_ms = 0.0;      ///< t_abs
 };
 
 }  // namespace softsill

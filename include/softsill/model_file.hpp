@@ -29,8 +29,8 @@
 ///     edges_ms = [0, 5, 20, 80]
 ///     values = [10, 4, 1]
 ///
-/// A kernel that is left out, or has family = "absent", is 0. A spline kernel has family = "spline",
-/// coefficients and either support_ms, first_ms and count (as in a variant) or knots_ms.
+/// A kernel that is left out, or has family = "absent", is 0. A spline kernel has family =
+/// "spline", coefficients and either support_ms, first_ms and count (as in a variant) or knots_ms.
 
 #include <string>
 

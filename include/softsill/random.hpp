@@ -1,8 +1,8 @@
 #pragma once
 
 /// \file random.hpp
-/// Counter-based random numbers: the n-th number of a stream is a pure function of (seed, stream, n),
-/// so results do not depend on the number of threads or on the order of work.
+/// Counter-based random numbers: the n-th number of a stream is a pure function of (seed, stream,
+/// n), so results do not depend on the number of threads or on the order of work.
 
 #include <array>
 #include <cstdint>

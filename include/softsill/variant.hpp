@@ -1,8 +1,8 @@
 #pragma once
 
 /// \file variant.hpp
-/// A model variant: which kernels are present and how they are built, which escape function, what is
-/// fitted. A variant is data (a TOML file), never a code path.
+/// A model variant: which kernels are present and how they are built, which escape function, what
+/// is fitted. A variant is data (a TOML file), never a code path.
 
 #include <optional>
 #include <string>
@@ -16,14 +16,14 @@ namespace softsill {
 /// How one kernel is to be estimated.
 struct KernelPlan {
   KernelFamily family = KernelFamily::spline;
-  double support_ms = 200.0;      ///< spline: where the kernel must have reached 0
-  double first_ms = 1.0;          ///< spline: lag below which knots are evenly spaced
-  int count = 14;                 ///< spline: basis functions; exponentials: how many
-  std::vector<double> edges_ms;   ///< steps
+  double support_ms = 200.0;     ///< spline: where the kernel must have reached 0
+  double first_ms = 1.0;         ///< spline: lag below which knots are evenly spaced
+  int count = 14;                ///< spline: basis functions; exponentials: how many
+  std::vector<double> edges_ms;  ///< steps
   /// exponentials: starting values, empty for automatic ones spread over the allowed range
   std::vector<double> time_constants_ms;
   bool fit_time_constants = true;
-  double shortest_ms = 0.5;       ///< exponentials: allowed range of time constants
+  double shortest_ms = 0.5;  ///< exponentials: allowed range of time constants
   double longest_ms = 500.0;
   /// exponentials, eta only: one more exponential that shares kappa's membrane time constant
   bool with_membrane = false;
@@ -54,15 +54,15 @@ struct Variant {
   KernelPlan kappa;
   KernelPlan eta;
   KernelPlan theta_1;
-  Escape escape;                   ///< kind and fixed or starting values of own parameters
-  bool fit_lambda_0 = false;       ///< never for the exponential
-  bool fit_exponent = false;       ///< rectified_power only
+  Escape escape;              ///< kind and fixed or starting values of own parameters
+  bool fit_lambda_0 = false;  ///< never for the exponential
+  bool fit_exponent = false;  ///< rectified_power only
   RefractoryPlan refractory;
   SmoothingPlan smoothing;
-  bool use_voltage = true;         ///< false: spikes alone even where the potential was recorded
-  double mask_before_ms = 2.0;     ///< potential left out this long before each spike ...
-  double mask_after_ms = 5.0;      ///< ... and this long after it
-  double voltage_step_ms = 0.2;    ///< potential is read at this step (a whole number of samples)
+  bool use_voltage = true;       ///< false: spikes alone even where the potential was recorded
+  double mask_before_ms = 2.0;   ///< potential left out this long before each spike ...
+  double mask_after_ms = 5.0;    ///< ... and this long after it
+  double voltage_step_ms = 0.2;  ///< potential is read at this step (a whole number of samples)
 
   /// The default variant: spline kernels, kappa over 150 ms, eta and theta_1 over 400 ms; the
   /// exponential escape function.
@@ -71,7 +71,8 @@ struct Variant {
   bool operator==(const Variant&) const = default;
 };
 
-/// Reads a variant file. What the file does not say is as in Variant(). An example with every table:
+/// Reads a variant file. What the file does not say is as in Variant(). An example with every
+/// table:
 ///
 ///     name = "membrane and two adaptation currents"
 ///     [kappa]
