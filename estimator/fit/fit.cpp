@@ -12,7 +12,7 @@
 namespace softsill {
 namespace {
 
-constexpr double change_per_cell = 1.0;  // of log hazard within one two-point cell
+constexpr double change_per_cell = 0.7;  // of log hazard within one two-point cell
 
 double block_length_ms(const Coordinates& coordinates) {
   return std::max(1000.0, coordinates.support_ms());
@@ -165,7 +165,7 @@ MinimizerOptions CellFit::minimizer_options() const {
 
 Estimate fit(const Recording& recording, const Variant& variant, const FitOptions& options) {
   check_variant(variant, recording);
-  require_fittable(recording);
+  require_fittable(recording, variant.use_voltage);
   Estimate estimate;
   estimate.cell = recording.cell;
   estimate.variant = variant;

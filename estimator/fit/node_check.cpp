@@ -17,49 +17,96 @@ struct NodeCheck {
   std::vector<double> cell_difference;  ///< expected spikes, finer minus present
 };
 
-Vector rates_at(const SpikeDesign& design, const Mapped& m) {
-  Vector rate = design.nodes * m.beta;
-  for (double& x : rate) {
-    x = escape_rate(m.escape, x);
+/// Rates at the rows of a design, and the derivative of sum w rate by (beta, log lambda_0, log n).
+struct IntegralTerms {
+  Vector rate;
+  Vector gradient;
+};
+
+IntegralTerms integral_terms(const RowMatrix& rows, const Vector& weights, const Mapped& m) {
+  const Eigen::Index width = rows.cols();
+  IntegralTerms out{rows * m.beta, Vector::Zero(width + 2)};
+  Vector slope(rows.rows());
+  for (Eigen::Index i = 0; i < rows.rows(); ++i) {
+    const EscapeDerivatives e = escape_at(m.escape, out.rate[i]);
+    out.rate[i] = e.rate;
+    slope[i] = weights[i] * e.rate_x;
+    out.gradient[width] += weights[i] * e.rate;
+    out.gradient[width + 1] += weights[i] * e.rate_n;
   }
-  return rate;
+  out.gradient.head(width) = rows.transpose() * slope;
+  return out;
 }
 
-/// Compares the nodes with finer ones everywhere, at the present estimate.
+/// The cells that hold anything: all others together hold a tenth of the allowed error at most.
+std::vector<bool> cells_that_matter(const std::vector<double>& integrals, double allowed) {
+  std::vector<bool> chosen(integrals.size());
+  const double least = 0.1 * allowed / static_cast<double>(integrals.size());
+  for (std::size_t i = 0; i < integrals.size(); ++i) {
+    chosen[i] = integrals[i] > least;
+  }
+  return chosen;
+}
+
+std::vector<SweepCells> only(const std::vector<SweepCells>& cells,
+                             const std::vector<bool>& chosen) {
+  std::vector<SweepCells> out;
+  std::size_t index = 0;
+  for (const SweepCells& sweep : cells) {
+    out.emplace_back();
+    for (const Cell& cell : sweep) {
+      if (chosen[index++]) {
+        out.back().push_back(cell);
+      }
+    }
+  }
+  return out;
+}
+
+/// Compares the nodes with finer ones, at the present estimate.
 NodeCheck check_nodes(CellFit& fit) {
   CellObjective& likelihood = *fit.likelihood;
   const Mapped m = likelihood.coordinates().map(fit.minimum.theta);
-  NodePlan plan = likelihood.plan();
-  plan.nodes = place_nodes(finer_cells(plan.nodes.cells));
-  const SpikeDesign finer =
-      make_design(likelihood.coordinates().spike_columns(), plan, likelihood.threads());
-  const Vector coarse_rate = rates_at(likelihood.design(), m), fine_rate = rates_at(finer, m);
-  const std::vector<double> coarse = cell_integrals(likelihood.plan().nodes, coarse_rate);
-  const std::vector<double> fine = cell_integrals(plan.nodes, fine_rate);
+  const NodeSet& nodes = likelihood.plan().nodes;
   NodeCheck check;
-  check.cell_difference = coarse;
-  std::size_t part = 0, index = 0;
-  double total = 0.0;
-  for (const SweepCells& sweep : likelihood.plan().nodes.cells) {
-    for (const Cell& cell : sweep) {
-      double sum = fine[part++];
-      if (cell.rule == CellRule::two_point) {
-        sum += fine[part++];
-      }
-      check.cell_difference[index] = sum - coarse[index];
-      total += check.cell_difference[index++];
-    }
-  }
-  check.error.nodes = likelihood.plan().nodes.size();
-  check.error.expected_spikes_error = std::abs(total);
+  check.error.nodes = nodes.size();
   check.error.allowed =
       allowed_integral_error * std::sqrt(static_cast<double>(fit.exposure.spikes));
-  // The same spikes are in both, so scores differ by the integrals' derivatives alone.
-  auto score = [&](const SpikeDesign& design) {
-    return evaluate_spikes(design, m.escape, m.beta, Want::gradient, likelihood.threads()).gradient;
-  };
-  const Vector shift =
-      fit.covariance * (m.beta_jacobian.transpose() * (score(finer) - score(likelihood.design())));
+  Vector weights = likelihood.design().weights_ms;
+  const std::vector<double> coarse =
+      cell_integrals(nodes, integral_terms(likelihood.design().nodes, weights, m).rate);
+  const std::vector<bool> chosen = cells_that_matter(coarse, check.error.allowed);
+  NodePlan plan = likelihood.plan();
+  plan.nodes = place_nodes(finer_cells(only(nodes.cells, chosen)));
+  const SpikeDesign finer =
+      make_design(likelihood.coordinates().spike_columns(), plan, likelihood.threads());
+  const IntegralTerms fine_terms = integral_terms(finer.nodes, finer.weights_ms, m);
+  const std::vector<double> fine = cell_integrals(plan.nodes, fine_terms.rate);
+  check.cell_difference.assign(coarse.size(), 0.0);
+  std::size_t part = 0, index = 0;
+  Eigen::Index node = 0;
+  double total = 0.0;
+  for (const SweepCells& sweep : nodes.cells) {
+    for (const Cell& cell : sweep) {
+      const auto count = static_cast<Eigen::Index>(cell.rule);
+      if (chosen[index]) {
+        double sum = fine[part++];
+        if (cell.rule == CellRule::two_point) {
+          sum += fine[part++];
+        }
+        check.cell_difference[index] = sum - coarse[index];
+        total += check.cell_difference[index];
+      } else {
+        weights.segment(node, count).setZero();
+      }
+      node += count;
+      ++index;
+    }
+  }
+  check.error.expected_spikes_error = std::abs(total);
+  const Vector score_change =
+      integral_terms(likelihood.design().nodes, weights, m).gradient - fine_terms.gradient;
+  const Vector shift = fit.covariance * (m.beta_jacobian.transpose() * score_change);
   for (Eigen::Index i = 0; i < shift.size(); ++i) {
     if (fit.covariance(i, i) > 0.0) {
       check.error.largest_shift_in_se = std::max(

@@ -11,7 +11,7 @@ constexpr double shortest_after_spike_ms = 0.5;
 constexpr double growth_after_spike = 0.25;
 constexpr int most_parts = 16;
 /// Shares of all expected spikes in one cell below which it is kept whole, or joined to others.
-constexpr double hardly_any = 1e-6;
+constexpr double hardly_any = 1e-5;
 constexpr double nothing = 1e-8;
 constexpr double longest_quiet_cell_ms = 8.0;
 constexpr double two_point_offset = 0.28867513459481287;  // 1 / (2 sqrt 3)

@@ -48,7 +48,11 @@ template <int Degree>
 class RunningIntegrals {
  public:
   RunningIntegrals(std::span<const double> input, double start_ms, double step_ms, double baseline)
-      : input_(input), start_ms_(start_ms), step_ms_(step_ms), baseline_(baseline) {}
+      : input_(input),
+        start_ms_(start_ms),
+        step_ms_(step_ms),
+        per_step_(1.0 / step_ms),
+        baseline_(baseline) {}
 
   /// Covers [begin_ms, end_ms]; earlier input counts as `baseline`, which is subtracted throughout.
   void restart(double begin_ms, double end_ms) {
@@ -63,7 +67,7 @@ class RunningIntegrals {
     }
     count_ = count;
     std::array<double, Degree + 1> integral{};
-    const double h = step_ms_;
+    const Fractions fractions = fractions_of(step_ms_);
     for (std::size_t i = 0; i < count; ++i) {
       const auto sample = static_cast<std::size_t>(first_) + i;
       const double value = sample < input_.size() ? input_[sample] - baseline_ : 0.0;
@@ -72,7 +76,7 @@ class RunningIntegrals {
       for (int m = 0; m <= Degree; ++m) {
         row[static_cast<std::size_t>(m) + 1] = integral[static_cast<std::size_t>(m)];
       }
-      integral = advanced(row, h);
+      integral = advanced(row, fractions);
     }
   }
 
@@ -84,12 +88,10 @@ class RunningIntegrals {
     }
     // J_{D+1}(t + h) = J_{D+1} + h (J_D + h/2 (J_{D-1} + ... + h/(D+1) I)).
     double sum = (*row)[0];
-    double factorial = 1.0;
-    for (int i = 0; i <= Degree; ++i) {
-      sum = (*row)[static_cast<std::size_t>(i) + 1] + rest * sum / (Degree + 1 - i);
-      factorial *= i > 0 ? i : 1;
+    for (std::size_t i = 0; i <= Degree; ++i) {
+      sum = (*row)[i + 1] + rest * inverse[Degree + 1 - i] * sum;
     }
-    return factorial * sum;
+    return factorial[Degree] * sum;
   }
 
   /// r! J_{r+1}(t) for r = 0 .. Degree.
@@ -99,11 +101,9 @@ class RunningIntegrals {
     if (row == nullptr) {
       return out;
     }
-    out = advanced(*row, rest);
-    double factorial = 1.0;
-    for (int r = 1; r <= Degree; ++r) {
-      factorial *= r;
-      out[static_cast<std::size_t>(r)] *= factorial;
+    out = advanced(*row, fractions_of(rest));
+    for (std::size_t r = 1; r <= Degree; ++r) {
+      out[r] *= factorial[r];
     }
     return out;
   }
@@ -112,21 +112,34 @@ class RunningIntegrals {
   /// The held sample, then J_1 .. J_{Degree+1} at the sample's start.
   using Row = std::array<double, Degree + 2>;
 
+  static constexpr std::array<double, 5> inverse = {0.0, 1.0, 1.0 / 2, 1.0 / 3, 1.0 / 4};
+  static constexpr std::array<double, 4> factorial = {1.0, 1.0, 2.0, 6.0};
+
+  /// h, h/2, h/3, ...: divisions would dominate the loops.
+  using Fractions = std::array<double, Degree + 2>;
+  static Fractions fractions_of(double h) {
+    Fractions out{};
+    for (std::size_t k = 1; k < out.size(); ++k) {
+      out[k] = h * inverse[k];
+    }
+    return out;
+  }
+
   /// J_1 .. J_{Degree+1} a time h after the row's start, input held (Horner).
-  static std::array<double, Degree + 1> advanced(const Row& row, double h) {
+  static std::array<double, Degree + 1> advanced(const Row& row, const Fractions& h) {
     std::array<double, Degree + 1> out{};
-    for (int m = 0; m <= Degree; ++m) {
+    for (std::size_t m = 0; m <= Degree; ++m) {
       double sum = row[0];
-      for (int i = 0; i <= m; ++i) {
-        sum = row[static_cast<std::size_t>(i) + 1] + h * sum / (m + 1 - i);
+      for (std::size_t i = 0; i <= m; ++i) {
+        sum = row[i + 1] + h[m + 1 - i] * sum;
       }
-      out[static_cast<std::size_t>(m)] = sum;
+      out[m] = sum;
     }
     return out;
   }
 
   std::pair<const Row*, double> locate(double t_ms) const {
-    const double position = (t_ms - start_ms_) / step_ms_;
+    const double position = (t_ms - start_ms_) * per_step_;
     if (position <= 0.0) {
       return {nullptr, 0.0};
     }
@@ -137,7 +150,7 @@ class RunningIntegrals {
   }
 
   std::span<const double> input_;
-  double start_ms_, step_ms_, baseline_;
+  double start_ms_, step_ms_, per_step_, baseline_;
   std::ptrdiff_t first_ = 0;
   std::size_t count_ = 0;
   std::vector<Row> rows_;
@@ -179,23 +192,22 @@ void spline_responses(const Basis& basis, std::span<const double> input, double 
   const TruncatedPowers powers(basis);
   const std::size_t width = basis.size();
   const std::vector<double> offset = basis.integrals();
-  sweep_levels<Degree>(
-      powers, input, start_ms, step_ms, before_value, times_ms,
-      [&](std::size_t i, const Level& level, const std::vector<double>& at_knots,
-          const std::array<double, Degree + 1>& at_zero) {
-        double* row = out.data() + i * width;
-        for (std::size_t k : level.functions) {
-          const TruncatedPowers::Function& function = powers.functions[k];
-          double sum = before_value * offset[k];
-          for (std::size_t j = 0; j < function.weights.size(); ++j) {
-            sum += function.weights[j] * at_knots[function.first_knot + j];
-          }
-          for (std::size_t r = 0; r <= Degree; ++r) {
-            sum += function.at_zero[r] * at_zero[r];
-          }
-          row[k] = sum;
-        }
-      });
+  sweep_levels<Degree>(powers, input, start_ms, step_ms, before_value, times_ms,
+                       [&](std::size_t i, const Level& level, const std::vector<double>& at_knots,
+                           const std::array<double, Degree + 1>& at_zero) {
+                         double* row = out.data() + i * width;
+                         for (std::size_t k : level.functions) {
+                           const TruncatedPowers::Function& function = powers.functions[k];
+                           double sum = before_value * offset[k];
+                           for (std::size_t j = 0; j < function.weights.size(); ++j) {
+                             sum += function.weights[j] * at_knots[function.first_knot + j];
+                           }
+                           for (std::size_t r = 0; r <= Degree; ++r) {
+                             sum += function.at_zero[r] * at_zero[r];
+                           }
+                           row[k] = sum;
+                         }
+                       });
 }
 
 template <int Degree>
@@ -207,35 +219,35 @@ std::vector<double> spline_filtered(const Kernel& kernel, std::span<const double
   std::vector<double> knot_weight(powers.knots.size());
   const Level* current = nullptr;
   std::array<double, Degree + 1> zero_weight{};
-  sweep_levels<Degree>(
-      powers, input, start_ms, step_ms, before_value, times_ms,
-      [&](std::size_t i, const Level& level, const std::vector<double>& at_knots,
-          const std::array<double, Degree + 1>& at_zero) {
-        if (i == 0 || current != &level) {
-          // One set of weights per level: coefficients folded into the truncated powers.
-          current = &level;
-          std::fill(knot_weight.begin(), knot_weight.end(), 0.0);
-          zero_weight = {};
-          for (std::size_t k : level.functions) {
-            const TruncatedPowers::Function& function = powers.functions[k];
-            for (std::size_t j = 0; j < function.weights.size(); ++j) {
-              knot_weight[function.first_knot + j] +=
-                  kernel.coefficients[k] * function.weights[j];
-            }
-            for (std::size_t r = 0; r <= Degree; ++r) {
-              zero_weight[r] += kernel.coefficients[k] * function.at_zero[r];
-            }
-          }
-        }
-        double part = 0.0;
-        for (std::size_t j = level.first_knot; j < level.end_knot; ++j) {
-          part += knot_weight[j] * at_knots[j];
-        }
-        for (std::size_t r = 0; r <= Degree; ++r) {
-          part += zero_weight[r] * at_zero[r];
-        }
-        sum[i] += part;
-      });
+  sweep_levels<Degree>(powers, input, start_ms, step_ms, before_value, times_ms,
+                       [&](std::size_t i, const Level& level, const std::vector<double>& at_knots,
+                           const std::array<double, Degree + 1>& at_zero) {
+                         if (i == 0 || current != &level) {
+                           // One set of weights per level: coefficients folded into the truncated
+                           // powers.
+                           current = &level;
+                           std::fill(knot_weight.begin(), knot_weight.end(), 0.0);
+                           zero_weight = {};
+                           for (std::size_t k : level.functions) {
+                             const TruncatedPowers::Function& function = powers.functions[k];
+                             for (std::size_t j = 0; j < function.weights.size(); ++j) {
+                               knot_weight[function.first_knot + j] +=
+                                   kernel.coefficients[k] * function.weights[j];
+                             }
+                             for (std::size_t r = 0; r <= Degree; ++r) {
+                               zero_weight[r] += kernel.coefficients[k] * function.at_zero[r];
+                             }
+                           }
+                         }
+                         double part = 0.0;
+                         for (std::size_t j = level.first_knot; j < level.end_knot; ++j) {
+                           part += knot_weight[j] * at_knots[j];
+                         }
+                         for (std::size_t r = 0; r <= Degree; ++r) {
+                           part += zero_weight[r] * at_zero[r];
+                         }
+                         sum[i] += part;
+                       });
   return sum;
 }
 
