@@ -8,6 +8,7 @@
 #include <boost/multiprecision/cpp_bin_float.hpp>
 #include <cmath>
 #include <limits>
+#include <ostream>
 #include <string>
 #include <vector>
 
@@ -16,6 +17,12 @@
 #include "softsill/escape.hpp"
 
 namespace softsill {
+
+/// How googletest names a parameter.
+void PrintTo(const Escape& escape, std::ostream* out) {
+  *out << to_string(escape.kind) << " n = " << escape.exponent;
+}
+
 namespace {
 
 using Wide = boost::multiprecision::cpp_bin_float_100;

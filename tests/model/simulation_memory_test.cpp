@@ -4,6 +4,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <ostream>
 #include <string>
 #include <vector>
 
@@ -77,6 +78,8 @@ struct Case {
   double threshold;
   double refractory_ms;
 };
+
+void PrintTo(const Case& c, std::ostream* out) { *out << c.name; }
 
 class AgainstPlain : public ::testing::TestWithParam<Case> {};
 
