@@ -9,6 +9,9 @@
 namespace softsill {
 namespace {
 
+constexpr double room_below = 1e5;  // nats between the cost's zero and the value
+constexpr int most_solves = 50;
+
 /// Free coordinates in, everything the solver needs out.
 class Reduced {
  public:
@@ -151,6 +154,38 @@ class StopWhenDone : public ceres::IterationCallback {
   const MinimizerOptions& options_;
 };
 
+/// One run of the trust region from `at`, which is moved to where it ends; false when interrupted.
+bool solve_once(const Reduced& problem, const MinimizerOptions& options, double floor, Vector& at,
+                Minimum& out) {
+  ceres::Problem::Options problem_options;
+  problem_options.cost_function_ownership = ceres::DO_NOT_TAKE_OWNERSHIP;
+  ceres::Problem ceres_problem(problem_options);
+  TrustRegionCost cost(problem, floor);
+  ceres_problem.AddResidualBlock(&cost, nullptr, at.data());
+  StopWhenDone stop(cost, options);
+  ceres::Solver::Options solver;
+  solver.minimizer_type = ceres::TRUST_REGION;
+  solver.linear_solver_type = ceres::DENSE_QR;
+  solver.max_num_iterations = std::max(1, options.max_iterations - out.iterations);
+  // Tolerances are relative to the shifted cost; the callback decides, these only end a stall.
+  solver.function_tolerance = 1e-18;
+  solver.gradient_tolerance = 1e-16;
+  solver.parameter_tolerance = 1e-15;
+  solver.initial_trust_region_radius = 1e8;
+  solver.max_num_consecutive_invalid_steps = 30;
+  solver.logging_type = ceres::SILENT;
+  // Even a silent solver complains on stderr; what it has to say is in the report.
+  FLAGS_minloglevel = google::GLOG_FATAL;
+  solver.num_threads = 1;
+  solver.callbacks.push_back(&stop);
+  solver.update_state_every_iteration = true;
+  ceres::Solver::Summary summary;
+  ceres::Solve(solver, &ceres_problem, &summary);
+  out.report = summary.BriefReport();
+  out.iterations += std::max(0, static_cast<int>(summary.iterations.size()) - 1);
+  return !stop.interrupted;
+}
+
 /// Newton steps, halved until the value falls; they settle the last digits.
 void polish(const Reduced& problem, double target, Vector& at, Evaluated& here) {
   for (int step = 0; step < 5; ++step) {
@@ -193,37 +228,19 @@ Minimum minimize(Objective& objective, const Vector& start, const MinimizerOptio
   }
   const double decrement = newton_decrement(here);
   if (problem.size() > 0 && !(decrement < reachable(options.decrement, here.value))) {
-    // Far enough below that the rank-one term stays small, near enough to keep the digits.
-    const double gap = std::isfinite(decrement) ? decrement : 0.0;
-    const double floor = here.value - 1e5 - 1e2 * std::min(gap, 1e6);
-    ceres::Problem::Options problem_options;
-    problem_options.cost_function_ownership = ceres::DO_NOT_TAKE_OWNERSHIP;
-    ceres::Problem ceres_problem(problem_options);
-    TrustRegionCost cost(problem, floor);
-    ceres_problem.AddResidualBlock(&cost, nullptr, at.data());
-    StopWhenDone stop(cost, options);
-    ceres::Solver::Options solver;
-    solver.minimizer_type = ceres::TRUST_REGION;
-    solver.linear_solver_type = ceres::DENSE_QR;
-    solver.max_num_iterations = options.max_iterations;
-    // Tolerances are relative to the shifted cost; the callback decides, these only end a stall.
-    solver.function_tolerance = 1e-18;
-    solver.gradient_tolerance = 1e-16;
-    solver.parameter_tolerance = 1e-15;
-    solver.initial_trust_region_radius = 1e8;
-    solver.max_num_consecutive_invalid_steps = 30;
-    solver.logging_type = ceres::SILENT;
-    // Even a silent solver complains on stderr; what it has to say is in the report.
-    FLAGS_minloglevel = google::GLOG_FATAL;
-    solver.num_threads = 1;
-    solver.callbacks.push_back(&stop);
-    solver.update_state_every_iteration = true;
-    ceres::Solver::Summary summary;
-    ceres::Solve(solver, &ceres_problem, &summary);
-    out.report = summary.BriefReport();
-    out.iterations = static_cast<int>(summary.iterations.size()) - 1;
-    out.interrupted = stop.interrupted;
-    here = problem.evaluate(at, Want::derivatives);
+    for (int solve = 0; solve < most_solves; ++solve) {
+      // Far enough below that the rank-one term stays small, near enough to keep the digits.
+      const double gap = newton_decrement(here);
+      const double floor =
+          here.value - room_below - 1e2 * std::min(std::isfinite(gap) ? gap : 0.0, 1e6);
+      out.interrupted = !solve_once(problem, options, floor, at, out);
+      here = problem.evaluate(at, Want::derivatives);
+      const bool reached_floor = here.value - floor < 0.5 * room_below;
+      if (out.interrupted || !reached_floor || out.iterations >= options.max_iterations) {
+        break;
+      }
+      // The value fell so far that c is not below it any more: go on with a lower one.
+    }
     if (std::isfinite(here.value) && !out.interrupted) {
       polish(problem, options.decrement, at, here);
     }

@@ -29,6 +29,12 @@ std::string plain_name(const std::string& coordinate) {
   if (coordinate == "log_lambda_0") {
     return "lambda_0";
   }
+  if (coordinate == "log_sigma") {
+    return "the voltage noise's sd";
+  }
+  if (coordinate == "atanh_rho") {
+    return "its time constant";
+  }
   if (coordinate == "log_exponent") {
     return "the escape exponent";
   }

@@ -7,6 +7,7 @@
 namespace softsill {
 namespace {
 
+constexpr double other_softness = 1.5;
 constexpr double same_optimum = 1e-3;  // nats
 
 /// Shifts the constant so that as many spikes are expected as there are: whatever else a start gets
@@ -143,7 +144,17 @@ void try_starts(CellFit& fit, const Pilot& pilot, const Vector& first, Progress&
 void try_other_softness(CellFit& fit) {
   const std::ptrdiff_t b = fit.coordinates().index("b");
   Vector start = fit.minimum.theta;
-  start[b] *= 1.5;
+  // A harder threshold with the same hazard where it fires: x -> 1.5 (x - mean) + mean.
+  const double at_spikes =
+      (fit.likelihood->design().spikes * fit.coordinates().map(start).beta).mean();
+  start[b] *= other_softness;
+  for (std::size_t i = 0; i < fit.coordinates().size(); ++i) {
+    if (fit.coordinates().names()[i].rfind("theta_1[", 0) == 0) {
+      start[static_cast<Eigen::Index>(i)] *= other_softness;
+    }
+  }
+  double& threshold = start[fit.coordinates().index("theta_0/Delta")];
+  threshold = other_softness * threshold + (other_softness - 1.0) * at_spikes;
   MinimizerOptions options = fit.minimizer_options();
   options.decrement = 1e-4;
   const Minimum other = minimize(*fit.penalised, start, options);
