@@ -79,14 +79,13 @@ void Basis::values(double lag_ms, std::span<double> out) const {
   for (int order = 1; order <= degree; ++order) {
     double carried = 0.0;
     for (int r = 0; r < order; ++r) {
-      // Functions that start before the first knot or end after the last are not in the basis; their
-      // missing knots never contribute to the ones that are.
+      // Functions that start before the first knot or end after the last are not in the basis;
+      // their missing knots never contribute to the ones that are.
       const std::ptrdiff_t right = cell + r + 1, left = cell + r + 1 - order;
       const bool inside = left >= 0 && right < static_cast<std::ptrdiff_t>(knots_ms.size());
-      const double share =
-          inside ? local[r] / (knots_ms[static_cast<std::size_t>(right)] -
-                               knots_ms[static_cast<std::size_t>(left)])
-                 : 0.0;
+      const double share = inside ? local[r] / (knots_ms[static_cast<std::size_t>(right)] -
+                                                knots_ms[static_cast<std::size_t>(left)])
+                                  : 0.0;
       const double up = inside ? (knots_ms[static_cast<std::size_t>(right)] - lag_ms) * share : 0.0;
       const double next =
           inside ? (lag_ms - knots_ms[static_cast<std::size_t>(left)]) * share : 0.0;
@@ -134,8 +133,8 @@ Basis Basis::spline(double support_ms, double first_ms, int count) {
     throw Error("", "spline kernel", "support and first lag must be positive");
   }
   if (count < 4) {
-    throw Error("", "spline kernel", "needs at least 4 basis functions, got " +
-                                         std::to_string(count));
+    throw Error("", "spline kernel",
+                "needs at least 4 basis functions, got " + std::to_string(count));
   }
   Basis basis;
   basis.family = KernelFamily::spline;

@@ -27,8 +27,8 @@ std::array<double, 4> polynomial_through(const std::array<double, 4>& samples, d
 
 TruncatedPowers::TruncatedPowers(const Basis& basis) : degree(basis.degree) {
   const std::vector<double>& all = basis.knots_ms;
-  const auto positive = static_cast<std::size_t>(
-      std::upper_bound(all.begin(), all.end(), 0.0) - all.begin());
+  const auto positive =
+      static_cast<std::size_t>(std::upper_bound(all.begin(), all.end(), 0.0) - all.begin());
   knots.assign(all.begin() + static_cast<std::ptrdiff_t>(positive), all.end());
   const auto order = static_cast<std::size_t>(degree) + 1;
   const double sign = degree % 2 == 0 ? -1.0 : 1.0;

@@ -15,12 +15,12 @@ namespace softsill {
 struct TruncatedPowers {
   struct Function {
     std::array<double, 4> at_zero{};
-    std::size_t first_knot = 0;         ///< index into `knots`
-    std::vector<double> weights;        ///< of consecutive knots from first_knot on
-    double reach_ms = 0.0;              ///< where the function has ended
+    std::size_t first_knot = 0;   ///< index into `knots`
+    std::vector<double> weights;  ///< of consecutive knots from first_knot on
+    double reach_ms = 0.0;        ///< where the function has ended
   };
   int degree = 0;
-  std::vector<double> knots;            ///< the positive ones, ms
+  std::vector<double> knots;  ///< the positive ones, ms
   std::vector<Function> functions;
 
   explicit TruncatedPowers(const Basis& basis);
@@ -32,8 +32,8 @@ class PolynomialPieces {
  public:
   struct Cell {
     double begin = 0.0, end = 0.0;
-    std::size_t first = 0;              ///< first basis function that lives here
-    int count = 0;                      ///< how many do, at most 4
+    std::size_t first = 0;  ///< first basis function that lives here
+    int count = 0;          ///< how many do, at most 4
     std::array<std::array<double, 4>, 4> coefficients{};
   };
   explicit PolynomialPieces(const Basis& basis);
@@ -50,7 +50,7 @@ class PolynomialPieces {
 
  private:
   std::vector<Cell> cells_;
-  std::vector<std::size_t> lookup_;   ///< first cell that can hold a lag of that slot
+  std::vector<std::size_t> lookup_;  ///< first cell that can hold a lag of that slot
   double per_ms_ = 1.0;
 };
 

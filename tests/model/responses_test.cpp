@@ -197,7 +197,8 @@ TEST(Responses, MomentsAreDerivativesByTimeConstant) {
       }
       return out;
     };
-    const auto mid = moments(tau), up = moments(tau * std::exp(h)), down = moments(tau * std::exp(-h));
+    const auto mid = moments(tau), up = moments(tau * std::exp(h)),
+               down = moments(tau * std::exp(-h));
     for (std::size_t i = 0; i < times.size(); ++i) {
       const double first = (up[3 * i] - down[3 * i]) / (2 * h);
       const double second = (up[3 * i] - 2 * mid[3 * i] + down[3 * i]) / (h * h);
