@@ -20,7 +20,7 @@ estimate() {
   name=$1
   cell=$2
   shift 2
-  printf '\n======== %s: softsill fit %s\n\n' "$name" "data/demo/$cell/cell.toml --before zero $*"
+  printf '\n======== %s: softsill fit %s\n\n' "$name" "data/demo/$cell/cell.toml --before zero${*:+ $*}"
   status=0
   $softsill fit "data/demo/$cell/cell.toml" --out "results/$name" --before zero "$@" || status=$?
   [ "$status" = 0 ] || [ "$status" = 3 ] || exit "$status"

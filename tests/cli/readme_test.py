@@ -68,7 +68,7 @@ class Readme(unittest.TestCase):
                                        delta=max(1.01 * last_digit, 0.01 * abs(float(b))))
 
     def test_sheet_and_variant_are_read(self):
-        sheet, variant = blocks("toml")
+        sheet, variant, _ = blocks("toml")
         for name in ("frozen.csv.gz", "frozen_1_spikes.csv", "frozen_2_spikes.csv"):
             shutil.copy(os.path.join(DEMO, "n03", name), self.scratch.name)
         shutil.copy(os.path.join(DEMO, "n03", "noise.csv.gz"),
@@ -83,6 +83,18 @@ class Readme(unittest.TestCase):
         self.assertEqual(fitted.returncode, 0, fitted.stderr)
         self.assertIn("membrane and two afterpotentials", fitted.stdout)
         self.assertIn("series resistance", fitted.stdout)
+
+    def test_model_file_is_simulated(self):
+        _, _, model = blocks("toml")
+        current = os.path.join(DEMO, "n03", "frozen.csv.gz")
+        result = run("simulate", self.write("model.toml", model), "--current", current, "--trials", "20",
+                     "--out", "simulated", "--mean-voltage", cwd=self.scratch.name)
+        self.assertEqual(result.returncode, 0, result.stderr)
+        for name in ("trains.csv", "model.toml", "simulation.json", "mean_voltage.csv"):
+            self.assertIn("`%s`" % name, text())
+            self.assertTrue(os.path.exists(os.path.join(self.scratch.name, "simulated", name)), name)
+        with open(os.path.join(self.scratch.name, "simulated", "trains.csv"), encoding="ascii") as file:
+            self.assertGreater(len(file.readlines()), 100)
 
     def test_python_reads_the_results(self):
         (code,) = blocks("python")

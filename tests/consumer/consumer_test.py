@@ -39,7 +39,7 @@ class Consumer(unittest.TestCase):
             source = os.path.join(scratch, "readme.cpp")
             with open(source, "w", encoding="utf-8") as file:
                 file.write(program)
-            self.command(CMAKE, "-S", os.path.join(SOURCE, "tests", "consumer", "project"), "-B", build,
+            self.command(CMAKE, "-G", "Ninja", "-S", os.path.join(SOURCE, "tests", "consumer", "project"), "-B", build,
                          "-DCMAKE_PREFIX_PATH=" + prefix, "-DPROGRAM=" + source,
                          "-DCMAKE_BUILD_TYPE=Release", "-DSANITIZE=" + os.environ["SOFTSILL_SANITIZE"])
             self.command(CMAKE, "--build", build)
