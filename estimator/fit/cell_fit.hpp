@@ -86,6 +86,10 @@ Vector starting_values(const Coordinates& target, const Coordinates& pilot,
                        const Minimum& pilot_minimum, const VoltageFit* voltage,
                        const Vector& pilot_predictor_at_spikes, const Vector& nonlinear);
 
+/// The fit's kernels as curves with bands, and effective degrees of freedom.
+void describe_curves(const CellFit& fit, const Reading& reading, double z, Estimate& estimate);
+/// A kernel there is nothing to show of.
+KernelCurve absent_curve(const std::string& name, const std::string& why);
 /// Sets status, quantities, curves, model and bookkeeping of an estimate.
 void describe(CellFit& fit, Estimate& estimate);
 /// Adds the plain sentences about what the data cannot tell.

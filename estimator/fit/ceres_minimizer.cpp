@@ -11,6 +11,7 @@ namespace {
 
 constexpr double room_below = 1e5;  // nats between the cost's zero and the value
 constexpr int most_solves = 50;
+constexpr int most_polishing = 20;
 
 /// Free coordinates in, everything the solver needs out.
 class Reduced {
@@ -188,7 +189,7 @@ bool solve_once(const Reduced& problem, const MinimizerOptions& options, double 
 
 /// Newton steps, halved until the value falls; they settle the last digits.
 void polish(const Reduced& problem, double target, Vector& at, Evaluated& here) {
-  for (int step = 0; step < 5; ++step) {
+  for (int step = 0; step < most_polishing; ++step) {
     const Eigen::LLT<Matrix> factor(here.hessian);
     if (factor.info() != Eigen::Success || newton_decrement(here) < reachable(target, here.value)) {
       return;

@@ -1,9 +1,9 @@
 #include <Eigen/Eigenvalues>
 #include <algorithm>
 #include <cmath>
-#include <cstdio>
 
 #include "estimator/fit/cell_fit.hpp"
+#include "estimator/fit/plain_number.hpp"
 
 namespace softsill {
 namespace {
@@ -11,12 +11,8 @@ namespace {
 constexpr std::size_t few_spikes = 500;
 constexpr double tied_correlation = 0.95;
 constexpr double robust_ratio = 1.5;
-
-std::string number(double value, const char* format = "%.3g") {
-  char text[64];
-  std::snprintf(text, sizeof text, format, value);
-  return text;
-}
+constexpr double late_share = 0.7;  // of the support
+constexpr double late_size = 0.01;  // of the kernel's largest value
 
 /// What a coordinate is called in a sentence.
 std::string plain_name(const std::string& coordinate) {
@@ -50,11 +46,54 @@ void say_spikes(const CellFit& fit, Estimate& estimate) {
   }
 }
 
-void say_undetermined_lags(const Estimate& estimate, Estimate& out) {
+void say_undetermined_lags(Estimate& estimate) {
   for (const KernelCurve& curve : estimate.kernels) {
     for (const Interval& stretch : curve.undetermined) {
-      out.limits.push_back(curve.kernel + " between " + number(stretch.begin_ms) + " and " +
-                           number(stretch.end_ms) + " ms is set by the smoothing, not by the data");
+      estimate.limits.push_back(curve.kernel + " between " + plain_number(stretch.begin_ms) +
+                                " and " + plain_number(stretch.end_ms) +
+                                " ms is set by the smoothing, not by the data");
+    }
+  }
+}
+
+/// Splines are forced to 0 at the end of their support; a kernel that is clearly not 0 shortly
+/// before was cut off, and what is missing went into the constants.
+void say_unfinished(const CellFit& fit, Estimate& estimate) {
+  for (const KernelCurve& curve : estimate.kernels) {
+    const KernelPart* part = fit.coordinates().part(curve.kernel);
+    if (part == nullptr || part->basis.family != KernelFamily::spline) {
+      continue;
+    }
+    double largest = 0.0;
+    for (double value : curve.value) {
+      largest = std::max(largest, std::abs(value));
+    }
+    for (std::size_t i = 0; i < curve.lag_ms.size(); ++i) {
+      const bool clear = curve.low[i] > 0.0 || curve.high[i] < 0.0;
+      if (curve.lag_ms[i] > late_share * part->basis.support_ms && clear &&
+          std::abs(curve.value[i]) > late_size * largest) {
+        estimate.limits.push_back(
+            curve.kernel + " has not reached 0 at " + plain_number(curve.lag_ms[i]) +
+            " ms, shortly before its support of " + plain_number(part->basis.support_ms, "%.4g") +
+            " ms ends: a longer support_ms may change it and the constants");
+        break;
+      }
+    }
+  }
+}
+
+/// Time constants that the data cannot keep apart.
+void say_twins(const CellFit& fit, Estimate& estimate) {
+  for (const KernelPart& part : fit.coordinates().parts()) {
+    const std::vector<double>& tau = part.basis.time_constants_ms;
+    for (std::size_t i = 0; i < tau.size(); ++i) {
+      for (std::size_t j = i + 1; j < tau.size(); ++j) {
+        if (std::abs(std::log(tau[i] / tau[j])) < 0.1) {
+          estimate.limits.push_back("two time constants of " + part.name + " coincide (" +
+                                    plain_number(tau[i]) + " and " + plain_number(tau[j]) +
+                                    " ms): use one exponential less");
+        }
+      }
     }
   }
 }
@@ -63,7 +102,7 @@ void say_mode(const CellFit& fit, Estimate& estimate) {
   if (fit.joint()) {
     if (fit.coordinates().part("eta") != nullptr && fit.coordinates().part("theta_1") != nullptr) {
       estimate.limits.push_back(
-          "within " + number(fit.variant->mask_after_ms) +
+          "within " + plain_number(fit.variant->mask_after_ms) +
           " ms after a spike the potential is not used: there only eta - theta_1 is seen, and its "
           "split into eta and theta_1 is an extrapolation by smoothness");
     }
@@ -92,8 +131,8 @@ void say_refractory(const CellFit& fit, Estimate& estimate) {
   }
   if (exposure.shortest_interval_ms > 1.01 * exposure.refractory_ms) {
     estimate.limits.push_back(
-        "no spike follows another within " + number(exposure.shortest_interval_ms) +
-        " ms: between " + number(exposure.refractory_ms) +
+        "no spike follows another within " + plain_number(exposure.shortest_interval_ms) +
+        " ms: between " + plain_number(exposure.refractory_ms) +
         " ms and there the after-spike kernels are bounded by the smoothing only");
   }
   for (const Penalty& penalty : fit.penalised->penalties()) {
@@ -128,8 +167,8 @@ void say_ties(const CellFit& fit, Estimate& estimate) {
       const bool by_construction = first == "b" && second == "theta_0/Delta";
       if (std::abs(r) > tied_correlation && !by_construction) {
         estimate.limits.push_back(plain_name(first) + " and " + plain_name(second) +
-                                  " can hardly be told apart (correlation " + number(r, "%.3f") +
-                                  "): quote them together");
+                                  " can hardly be told apart (correlation " +
+                                  plain_number(r, "%.3f") + "): quote them together");
       }
     }
   }
@@ -181,7 +220,7 @@ void say_misspecification(const CellFit& fit, Estimate& estimate) {
   if (ratio > robust_ratio) {
     estimate.limits.push_back(
         "the robust standard error of " + std::string(b_index >= 0 ? "Delta" : "the threshold") +
-        " is " + number(ratio, "%.1f") +
+        " is " + plain_number(ratio, "%.1f") +
         " times the model's own: the model class or stationarity is doubtful, prefer the robust "
         "interval");
   }
@@ -200,7 +239,7 @@ void say_saturation(const CellFit& fit, Estimate& estimate) {
   }
   if (saturated > 0.2 * total) {
     estimate.limits.push_back(
-        number(100.0 * saturated / total, "%.0f") +
+        plain_number(100.0 * saturated / total, "%.0f") +
         " % of the expected spikes fall where the hazard exceeds 1 per ms: spikes are nearly "
         "certain there, and Delta rests on the rest");
   }
@@ -210,10 +249,10 @@ void say_choices(const CellFit& fit, Estimate& estimate) {
   const Exposure& exposure = fit.exposure;
   if (!fit.options->before) {
     const double whole = exposure.left_out_ms + exposure.analysed_ms;
-    estimate.notes.push_back("the first " + number(fit.coordinates().support_ms(), "%.4g") +
+    estimate.notes.push_back("the first " + plain_number(fit.coordinates().support_ms(), "%.4g") +
                              " ms of every sweep are left out because their past is unknown: " +
-                             number(exposure.left_out_ms / 1000.0, "%.3g") + " s (" +
-                             number(100.0 * exposure.left_out_ms / whole, "%.2g") +
+                             plain_number(exposure.left_out_ms / 1000.0, "%.3g") + " s (" +
+                             plain_number(100.0 * exposure.left_out_ms / whole, "%.2g") +
                              " % of the time) and " + std::to_string(exposure.left_out_spikes) +
                              " spikes");
     if (exposure.left_out_ms > 0.3 * whole) {
@@ -227,10 +266,10 @@ void say_choices(const CellFit& fit, Estimate& estimate) {
   }
   if (fit.joint()) {
     estimate.notes.push_back(
-        "the potential is read every " + number(fit.likelihood->voltage().step_ms) + " ms, from " +
-        number(fit.variant->mask_before_ms) + " ms before to " +
-        number(fit.variant->mask_after_ms) + " ms after each spike left out: " +
-        number(fit.likelihood->voltage().used_ms / 1000.0) + " s in use");
+        "the potential is read every " + plain_number(fit.likelihood->voltage().step_ms) +
+        " ms, from " + plain_number(fit.variant->mask_before_ms) + " ms before to " +
+        plain_number(fit.variant->mask_after_ms) + " ms after each spike left out: " +
+        plain_number(fit.likelihood->voltage().used_ms / 1000.0) + " s in use");
     if (fit.options->anchor) {
       estimate.notes.push_back("the anchor was not needed: the potential gives the mV scale");
     }
@@ -248,7 +287,7 @@ void say_choices(const CellFit& fit, Estimate& estimate) {
   }
   if (fit.node_error.expected_spikes_error > fit.node_error.allowed) {
     estimate.limits.push_back("the hazard's integral is off by " +
-                              number(fit.node_error.expected_spikes_error) +
+                              plain_number(fit.node_error.expected_spikes_error) +
                               " expected spikes even after refinement");
   }
 }
@@ -256,10 +295,18 @@ void say_choices(const CellFit& fit, Estimate& estimate) {
 }  // namespace
 
 void describe_limits(CellFit& fit, Estimate& estimate) {
+  if (!trustworthy(estimate.status)) {
+    // Numbers of a fit that failed its gate would only mislead; what is wrong can still be said.
+    say_twins(fit, estimate);
+    say_flat_direction(fit, estimate);
+    return;
+  }
   say_mode(fit, estimate);
   say_spikes(fit, estimate);
   say_refractory(fit, estimate);
-  say_undetermined_lags(estimate, estimate);
+  say_undetermined_lags(estimate);
+  say_unfinished(fit, estimate);
+  say_twins(fit, estimate);
   say_ties(fit, estimate);
   say_flat_direction(fit, estimate);
   say_saturation(fit, estimate);

@@ -297,9 +297,9 @@ Variant::Variant() {
   for (KernelPlan* plan : {&eta, &theta_1}) {
     // A faster component has decayed before the refractory time ends.
     plan->shortest_ms = 2.0;
-    plan->support_ms = 400.0;
+    plan->support_ms = 800.0;
     plan->first_ms = 2.0;
-    plan->count = 13;
+    plan->count = 15;
   }
 }
 
