@@ -116,16 +116,25 @@ std::vector<double> make_drive(const Model& model, const DrivingInput& driving,
   std::vector<double> drive(grid.steps);
   const double gap = model.resting_potential - model.threshold;
   const double per_step = model.escape.lambda_0_per_ms * grid.step_ms;
-  const bool exponential = model.escape.kind == EscapeKind::exponential;
+  const double per_delta = 1.0 / model.noise_level;
   const std::size_t pieces = (grid.steps + steps_per_piece - 1) / steps_per_piece;
   on_threads(threads, pieces, [&](std::size_t piece) {
     const std::size_t begin = piece * steps_per_piece;
     const std::size_t end = std::min(grid.steps, begin + steps_per_piece);
     const std::vector<double> effect = input_effect(model.kappa, driving, grid, begin, end);
-    for (std::size_t i = begin; i < end; ++i) {
-      const double x = (gap + effect[i - begin]) / model.noise_level;
-      // exp(+-300) per step is as good as certain or impossible, and far from denormal numbers.
-      drive[i] = exponential ? per_step * steady_exp(std::clamp(x, -300.0, 300.0)) : x;
+    const double* from = effect.data();
+    double* to = drive.data() + begin;
+    for (std::size_t i = 0; i < effect.size(); ++i) {
+      to[i] = (gap + from[i]) * per_delta;
+    }
+    if (model.escape.kind == EscapeKind::exponential) {
+      for (std::size_t i = 0; i < effect.size(); ++i) {
+        // exp(+-300) per step is as good as certain or impossible, and far from denormal numbers.
+        double x = to[i];
+        x = x < -300.0 ? -300.0 : x;
+        x = x > 300.0 ? 300.0 : x;
+        to[i] = per_step * steady_exp(x);
+      }
     }
   });
   return drive;
