@@ -112,13 +112,6 @@ SmoothingOptions tight() {
   return options;
 }
 
-/// Standard errors by which coefficients may miss the maximum: a likelihood is a sum that carries
-/// some 1e-14 of itself as rounding, so that is where a maximisation stops, and a decrement d is a
-/// distance of sqrt(2 d).
-double rounding_in_errors(const Minimum& minimum) {
-  return std::sqrt(2e-14 * std::abs(minimum.value));
-}
-
 // Source of the expected values: mgcv::gam(method = "REML", paraPen), live. Bounds: what is left of
 // the gradient of the score, mgcv's as it reports it, ours as we ask for it and what rounding does
 // to it, moves log lambda by (Hessian of the score)^-1 times that; mgcv reports that Hessian too.

@@ -2,10 +2,13 @@
 
 // A design made by a test, as something to minimise.
 
+#include <Eigen/Cholesky>
+#include <cmath>
 #include <cstdio>
 #include <limits>
 #include <utility>
 
+#include "estimator/fit/ceres_minimizer.hpp"
 #include "estimator/fit/objective.hpp"
 
 namespace softsill::reference {
@@ -57,6 +60,19 @@ inline double worst_relative(const Vector& a, const std::vector<double>& b) {
     worst = std::max(worst, std::abs(a[i] - other) / std::abs(other));
   }
   return worst;
+}
+
+/// Standard errors by which a minimum may miss the true one: a likelihood is a sum that carries
+/// some 1e-14 of itself as rounding, so that is where a maximisation stops, and a decrement d is a
+/// distance of sqrt(2 d).
+inline double rounding_in_errors(const Minimum& minimum) {
+  return std::sqrt(2e-14 * std::abs(minimum.value));
+}
+
+/// One Newton step further than where rounding of the value lets a minimisation stop: gradients
+/// tell more digits than values do.
+inline Vector one_step_further(const Minimum& minimum) {
+  return minimum.theta - minimum.hessian.llt().solve(minimum.gradient);
 }
 
 /// Says how close it was: a bound alone hides a slow drift towards it.
