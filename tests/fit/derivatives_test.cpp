@@ -400,7 +400,12 @@ TEST(CellDerivatives, Penalised) {
 
 // Time constants come and go through their logits.
 TEST(CellDerivatives, TimeConstantsRoundTrip) {
-  const Coordinates coordinates(parse_variant(kernel_plans[1], "v.toml"), true, false);
+  Variant variant = parse_variant(kernel_plans[1], "v.toml");
+  for (KernelPlan* plan : {&variant.kappa, &variant.eta, &variant.theta_1}) {
+    plan->shortest_ms = 0.5;
+    plan->longest_ms = 500.0;
+  }
+  const Coordinates coordinates(variant, true, false);
   int found = 0;
   for (std::size_t i = 0; i < coordinates.size(); ++i) {
     if (!coordinates.is_time_constant(i)) {
