@@ -54,8 +54,8 @@ TEST(VariantFile, EmptyTextIsTheDefault) {
   EXPECT_EQ(variant.kappa.family, KernelFamily::spline);
   EXPECT_EQ(variant.kappa.support_ms, 150.0);
   EXPECT_EQ(variant.kappa.count, 14);
-  EXPECT_EQ(variant.eta.support_ms, 400.0);
-  EXPECT_EQ(variant.theta_1.count, 13);
+  EXPECT_EQ(variant.eta.support_ms, 800.0);
+  EXPECT_EQ(variant.theta_1.count, 15);
   EXPECT_EQ(variant.escape.kind, EscapeKind::exponential);
   EXPECT_FALSE(variant.fit_lambda_0);
 }
