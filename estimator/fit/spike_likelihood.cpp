@@ -4,6 +4,7 @@
 #include <limits>
 
 #include "estimator/fit/parallel.hpp"
+#include "estimator/fit/row_sums.hpp"
 
 namespace softsill {
 namespace {
@@ -58,31 +59,36 @@ Term spike_term(const EscapeDerivatives& e) {
   return t;
 }
 
-/// log(1 - exp(-w lambda)) for a bin with a spike. With m = w lambda and r = 1 / (e^m - 1):
-/// d = r dm, d2 = r d2m + r' dm dm, r' = -e^m / (e^m - 1)^2.
+/// m / (e^m - 1) for m = w lambda: 1 where lambda underflows, 0 where it overflows.
+double bin_share(double m) { return m < 1e-30 ? 1.0 : m < 700.0 ? m / std::expm1(m) : 0.0; }
+
+/// log(1 - exp(-w lambda)) for a bin with a spike. With m = w lambda and q = m / (e^m - 1), in
+/// derivatives of log lambda, which stay finite where lambda does not:
+/// d = q dlog, d2 = q d2log + q (1 - q - m) dlog dlog.
 Term bin_term(const EscapeDerivatives& e, double w) {
   Term t;
   const double m = w * e.rate;
-  const double r = 1.0 / std::expm1(m);
-  const double r1 = -r * (1.0 + r);
-  const double mx = w * e.rate_x, mn = w * e.rate_n;
+  const double q = bin_share(m);
+  // The difference by its series where it would cancel.
+  const double q1 = q == 0.0 ? 0.0 : q * (m < 1e-3 ? -m * (0.5 + m / 12.0) : 1.0 - q - m);
   t.value = m > 1e-30 ? std::log(-std::expm1(-m)) : std::log(w) + e.log;
-  t.x = r * mx;
-  t.l = r * m;
-  t.n = r * mn;
-  t.xx = r * w * e.rate_xx + r1 * mx * mx;
-  t.xl = r * mx + r1 * mx * m;
-  t.xn = r * w * e.rate_xn + r1 * mx * mn;
-  t.ll = r * m + r1 * m * m;
-  t.ln = r * mn + r1 * m * mn;
-  t.nn = r * w * e.rate_nn + r1 * mn * mn;
+  t.x = q * e.log_x;
+  t.l = q;
+  t.n = q * e.log_n;
+  t.xx = q * e.log_xx + q1 * e.log_x * e.log_x;
+  t.xl = q1 * e.log_x;
+  t.xn = q * e.log_xn + q1 * e.log_x * e.log_n;
+  t.ll = q1;
+  t.ln = q1 * e.log_n;
+  t.nn = q * e.log_nn + q1 * e.log_n * e.log_n;
   return t;
 }
 
-/// Expected information of a bin, spike or none: (dm)(dm)^T / (e^m - 1).
+/// Expected information of a bin, spike or none: (dm)(dm)^T / (e^m - 1) = m q dlog dlog.
 void expect_bin(Term& t, const EscapeDerivatives& e, double w) {
   const double m = w * e.rate;
-  const double r = m > 0.0 ? m * m / std::expm1(m) : 0.0;
+  const double q = bin_share(m);
+  const double r = q > 0.0 ? m * q : 0.0;
   t.expected_xx = r * e.log_x * e.log_x;
   t.expected_xl = r * e.log_x;
   t.expected_xn = r * e.log_x * e.log_n;
@@ -94,50 +100,61 @@ void expect_bin(Term& t, const EscapeDerivatives& e, double w) {
 /// Sums over rows, in the coordinates (beta, log lambda_0, log n).
 class Sums {
  public:
-  Sums(Eigen::Index width, Want want) : width_(width), want_(want) {
+  Sums(Eigen::Index width, Want want)
+      : width_(width), padded_(padded_width(static_cast<std::size_t>(width))), want_(want) {
     if (want != Want::value) {
       gradient = Vector::Zero(width + 2);
+      sum_.assign(padded_, 0.0);
     }
     if (second_order()) {
       hessian = Matrix::Zero(width + 2, width + 2);
+      square_.assign(padded_ * padded_, 0.0);
     }
     if (want == Want::derivatives_and_expected) {
       expected = Matrix::Zero(width + 2, width + 2);
+      expected_square_.assign(padded_ * padded_, 0.0);
     }
   }
 
-  /// `rows` is n x width, `terms` n.
-  void add(const Eigen::Ref<const RowMatrix>& rows, const std::vector<Term>& terms, bool own) {
-    const Eigen::Index n = rows.rows();
-    Vector x(n), xx(n), weight(n);
-    for (Eigen::Index i = 0; i < n; ++i) {
-      const Term& t = terms[static_cast<std::size_t>(i)];
+  std::size_t padded() const { return padded_; }
+
+  /// `rows` are packed, terms.size() of them; `own` when the escape function has own parameters.
+  void add(const double* rows, const std::vector<Term>& terms, bool own) {
+    const std::size_t n = terms.size();
+    for (const Term& t : terms) {
       value += t.value;
-      x[i] = t.x;
-      xx[i] = t.xx;
     }
     if (want_ == Want::value) {
       return;
     }
-    gradient.head(width_).noalias() += rows.transpose() * x;
-    if (!second_order()) {
-      if (own) {
-        for (const Term& t : terms) {
-          gradient[width_] += t.l;
-          gradient[width_ + 1] += t.n;
-        }
-      }
-      return;
-    }
-    add_square(rows, xx, hessian);
-    if (want_ == Want::derivatives_and_expected) {
-      for (Eigen::Index i = 0; i < n; ++i) {
-        weight[i] = terms[static_cast<std::size_t>(i)].expected_xx;
-      }
-      add_square(rows, weight, expected);
-    }
+    weight_.resize(n);
+    add_by(terms, &Term::x);
+    add_rows(rows, weight_.data(), n, padded_, sum_.data());
     if (own) {
       add_own(rows, terms);
+    }
+    if (!second_order()) {
+      return;
+    }
+    scratch_.resize(n * padded_);
+    add_by(terms, &Term::xx);
+    add_squares(rows, weight_.data(), n, padded_, scratch_.data(), square_.data());
+    if (want_ == Want::derivatives_and_expected) {
+      add_by(terms, &Term::expected_xx);
+      add_squares(rows, weight_.data(), n, padded_, scratch_.data(), expected_square_.data());
+    }
+  }
+
+  /// Moves the packed sums to where they are read.
+  void finish() {
+    if (want_ != Want::value) {
+      gradient.head(width_) += Eigen::Map<const Vector>(sum_.data(), width_);
+    }
+    if (second_order()) {
+      unpack(square_, hessian);
+    }
+    if (want_ == Want::derivatives_and_expected) {
+      unpack(expected_square_, expected);
     }
   }
 
@@ -163,28 +180,37 @@ class Sums {
     return want_ == Want::derivatives || want_ == Want::derivatives_and_expected;
   }
 
-  /// out += rows^T diag(weight) rows, lower triangle.
-  void add_square(const Eigen::Ref<const RowMatrix>& rows, const Vector& weight, Matrix& out) {
-    scaled_ = rows;
-    scaled_.array().colwise() *= weight.array();
-    auto square = out.topLeftCorner(width_, width_);
-    square.triangularView<Eigen::Lower>() += rows.transpose() * scaled_;
+  void add_by(const std::vector<Term>& terms, double Term::*member) {
+    for (std::size_t i = 0; i < terms.size(); ++i) {
+      weight_[i] = terms[i].*member;
+    }
   }
 
-  void add_own(const Eigen::Ref<const RowMatrix>& rows, const std::vector<Term>& terms) {
+  void unpack(const std::vector<double>& square, Matrix& out) const {
+    const Eigen::Map<const RowMatrix> packed(square.data(), static_cast<Eigen::Index>(padded_),
+                                             static_cast<Eigen::Index>(padded_));
+    out.topLeftCorner(width_, width_).triangularView<Eigen::Lower>() +=
+        packed.topLeftCorner(width_, width_);
+  }
+
+  void add_own(const double* rows, const std::vector<Term>& terms) {
     const Eigen::Index l = width_, n = width_ + 1;
-    for (Eigen::Index i = 0; i < rows.rows(); ++i) {
-      const Term& t = terms[static_cast<std::size_t>(i)];
+    for (std::size_t i = 0; i < terms.size(); ++i) {
+      const Term& t = terms[i];
       gradient[l] += t.l;
       gradient[n] += t.n;
-      hessian.row(l).head(width_) += t.xl * rows.row(i);
-      hessian.row(n).head(width_) += t.xn * rows.row(i);
+      if (!second_order()) {
+        continue;
+      }
+      const Eigen::Map<const Eigen::RowVectorXd> row(rows + i * padded_, width_);
+      hessian.row(l).head(width_) += t.xl * row;
+      hessian.row(n).head(width_) += t.xn * row;
       hessian(l, l) += t.ll;
       hessian(n, l) += t.ln;
       hessian(n, n) += t.nn;
       if (want_ == Want::derivatives_and_expected) {
-        expected.row(l).head(width_) += t.expected_xl * rows.row(i);
-        expected.row(n).head(width_) += t.expected_xn * rows.row(i);
+        expected.row(l).head(width_) += t.expected_xl * row;
+        expected.row(n).head(width_) += t.expected_xn * row;
         expected(l, l) += t.expected_ll;
         expected(n, l) += t.expected_ln;
         expected(n, n) += t.expected_nn;
@@ -193,25 +219,32 @@ class Sums {
   }
 
   Eigen::Index width_;
+  std::size_t padded_;
   Want want_;
-  RowMatrix scaled_;
+  std::vector<double> sum_, square_, expected_square_, weight_, scratch_;
 };
 
 template <typename MakeTerm>
 void sum_rows(const RowMatrix& rows, Eigen::Index first, Eigen::Index end, const Escape& escape,
               const Vector& beta, MakeTerm&& make_term, Sums& sums) {
+  const auto columns = static_cast<std::size_t>(rows.cols());
+  std::vector<double> packed(static_cast<std::size_t>(rows_per_pass) * sums.padded());
+  std::vector<double> x(static_cast<std::size_t>(rows_per_pass));
+  std::vector<double> padded_beta(sums.padded(), 0.0);
+  std::copy_n(beta.data(), columns, padded_beta.data());
   std::vector<Term> terms;
   for (Eigen::Index row = first; row < end; row += rows_per_pass) {
-    const Eigen::Index count = std::min(rows_per_pass, end - row);
-    const auto part = rows.middleRows(row, count);
-    const Vector x = part * beta;
-    terms.resize(static_cast<std::size_t>(count));
-    for (Eigen::Index i = 0; i < count; ++i) {
-      terms[static_cast<std::size_t>(i)] = make_term(escape_at(escape, x[i]), row + i);
+    const auto count = static_cast<std::size_t>(std::min(rows_per_pass, end - row));
+    pack_rows(rows.data() + row * rows.cols(), count, columns, sums.padded(), packed.data());
+    dot_rows(packed.data(), count, sums.padded(), padded_beta.data(), x.data());
+    terms.resize(count);
+    for (std::size_t i = 0; i < count; ++i) {
+      terms[i] = make_term(escape_at(escape, x[i]), row + static_cast<Eigen::Index>(i));
     }
     // The exponential has no own parameter to fit, and is the common case.
-    sums.add(part, terms, escape.kind != EscapeKind::exponential);
+    sums.add(packed.data(), terms, escape.kind != EscapeKind::exponential);
   }
+  sums.finish();
 }
 
 Term spike_row_term(const SpikeDesign& design, const EscapeDerivatives& e, Eigen::Index row) {

@@ -6,12 +6,13 @@
 #include <numbers>
 
 #include "estimator/fit/parallel.hpp"
+#include "estimator/fit/row_sums.hpp"
 #include "softsill/error.hpp"
 
 namespace softsill {
 namespace {
 
-constexpr Eigen::Index rows_per_pass = 256;
+constexpr std::size_t rows_per_pass = 256;
 
 VoltageStatistics::Block empty_block(Eigen::Index n) {
   return {Matrix::Zero(n, n), Matrix::Zero(n, n), Matrix::Zero(n, n), 0.0, 0.0};
@@ -59,31 +60,60 @@ std::vector<Run> runs_of(const Sweep& sweep, double ready_ms, std::size_t stride
   return runs;
 }
 
-/// Adds z of one run; `before` is the last row of the run it continues, if any.
-void add_run(const RowMatrix& z, Eigen::Index first, const Run& run, bool has_before,
-             VoltageStatistics::Block& block, RowMatrix& mean, RowMatrix& difference) {
-  const auto n = static_cast<Eigen::Index>(run.count);
-  // A continued run sees its predecessor's last row as its own row -1.
-  const Eigen::Index begin = has_before ? first - 1 : first;
-  const Eigen::Index pairs = n - 1 + (has_before ? 1 : 0);
-  for (Eigen::Index row = 0; row < pairs; row += rows_per_pass) {
-    const Eigen::Index count = std::min(rows_per_pass, pairs - row);
-    const auto low = z.middleRows(begin + row, count), high = z.middleRows(begin + row + 1, count);
-    mean = 0.5 * (low + high);
-    difference = high - low;
-    block.mean.triangularView<Eigen::Lower>() += mean.transpose() * mean;
-    block.difference.triangularView<Eigen::Lower>() += difference.transpose() * difference;
+/// Squares of neighbouring means and differences, gathered in packed form.
+struct PairSums {
+  explicit PairSums(std::size_t columns)
+      : width(padded_width(columns)),
+        mean(width * width, 0.0),
+        difference(width * width, 0.0),
+        rows(rows_per_pass * width),
+        scratch(rows_per_pass * width),
+        ones(rows_per_pass, 1.0) {}
+
+  /// z: packed rows, pairs + 1 of them.
+  void add(const double* z, std::size_t pairs) {
+    for (std::size_t first = 0; first < pairs; first += rows_per_pass) {
+      const std::size_t count = std::min(rows_per_pass, pairs - first);
+      const double* low = z + first * width;
+      const double* high = low + width;
+      for (std::size_t k = 0; k < count * width; ++k) {
+        rows[k] = 0.5 * (low[k] + high[k]);
+      }
+      add_squares(rows.data(), ones.data(), count, width, scratch.data(), mean.data());
+      for (std::size_t k = 0; k < count * width; ++k) {
+        rows[k] = high[k] - low[k];
+      }
+      add_squares(rows.data(), ones.data(), count, width, scratch.data(), difference.data());
+    }
   }
-  const auto head = z.row(begin), tail = z.row(first + n - 1);
+
+  std::size_t width;
+  std::vector<double> mean, difference, rows, scratch, ones;
+};
+
+/// Adds packed z of one run; `has_before` when row first - 1 is the last of the run it continues.
+void add_run(const double* z, std::size_t first, const Run& run, bool has_before,
+             VoltageStatistics::Block& block, PairSums& sums) {
+  const Eigen::Index n = block.ends.rows();
+  const std::size_t begin = has_before ? first - 1 : first;
+  const std::size_t pairs = run.count - 1 + (has_before ? 1 : 0);
+  sums.add(z + begin * sums.width, pairs);
+  const Eigen::Map<const Vector> head(z + begin * sums.width, n);
+  const Eigen::Map<const Vector> tail(z + (first + run.count - 1) * sums.width, n);
   if (!has_before) {
-    block.ends.noalias() += head.transpose() * head;
+    block.ends.noalias() += head * head.transpose();
   }
-  block.ends.noalias() += 0.5 * (tail.transpose() * tail - head.transpose() * head);
+  block.ends.noalias() += 0.5 * (tail * tail.transpose() - head * head.transpose());
   block.pairs += static_cast<double>(pairs);
-  block.samples += static_cast<double>(n);
+  block.samples += static_cast<double>(run.count);
 }
 
-void complete(Matrix& lower) { lower = Matrix(lower.selfadjointView<Eigen::Lower>()); }
+/// The packed lower triangle as a complete symmetric matrix.
+Matrix completed(const std::vector<double>& square, std::size_t width, Eigen::Index n) {
+  const Eigen::Map<const RowMatrix> packed(square.data(), static_cast<Eigen::Index>(width),
+                                           static_cast<Eigen::Index>(width));
+  return Matrix(packed.topLeftCorner(n, n)).selfadjointView<Eigen::Lower>();
+}
 
 /// The quadratic form's matrix for one rho: ends + (1-rho)/(1+rho) mean + (1+rho)/(4(1-rho)) diff.
 Matrix combined(const VoltageStatistics::Block& block, double atanh_rho) {
@@ -185,19 +215,21 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
     }
     RowMatrix rows(static_cast<Eigen::Index>(times.size()), n - 1);
     piece.filler->fill(times, rows.data());
-    RowMatrix z(rows.rows(), n);
-    z.leftCols(n - 1) = rows;
-    z.col(n - 1) = Eigen::Map<const Vector>(voltage.data(), rows.rows());
+    PairSums sums(static_cast<std::size_t>(n));
+    std::vector<double> z(times.size() * sums.width);
+    pack_rows(rows.data(), times.size(), static_cast<std::size_t>(n) - 1, sums.width, z.data());
+    for (std::size_t i = 0; i < times.size(); ++i) {
+      z[i * sums.width + static_cast<std::size_t>(n) - 1] = voltage[i];
+    }
     VoltageStatistics::Block& block =
         statistics.blocks[static_cast<std::size_t>(piece.runs.front().block)];
-    RowMatrix mean, difference;
-    Eigen::Index row = continues ? 1 : 0;
+    std::size_t row = continues ? 1 : 0;
     for (const Run& run : piece.runs) {
-      add_run(z, row, run, !run.starts_segment, block, mean, difference);
-      row += static_cast<Eigen::Index>(run.count);
+      add_run(z.data(), row, run, !run.starts_segment, block, sums);
+      row += run.count;
     }
-    complete(block.mean);
-    complete(block.difference);
+    block.mean = completed(sums.mean, sums.width, n);
+    block.difference = completed(sums.difference, sums.width, n);
   });
   statistics.total = empty_block(n);
   for (const VoltageStatistics::Block& block : statistics.blocks) {
