@@ -259,4 +259,31 @@ Minimum minimize(Objective& objective, const Vector& start, const MinimizerOptio
   return out;
 }
 
+bool values_agree(Objective& objective, const Minimum& minimum, const std::vector<bool>& fixed) {
+  const Reduced problem(objective, minimum.theta, fixed);
+  const Vector at = problem.reduce(minimum.theta);
+  const Evaluated here = problem.evaluate(at, Want::derivatives);
+  const Eigen::LLT<Matrix> factor(here.hessian);
+  if (factor.info() != Eigen::Success) {
+    return false;
+  }
+  constexpr double rise = 0.02;  // nats: near enough for the quadratic, far above rounding
+  bool agree = true;
+  for (int direction = 0; direction < 3; ++direction) {
+    // Signs that mix all coordinates, the same in every run.
+    Vector sign(at.size());
+    for (Eigen::Index i = 0; i < at.size(); ++i) {
+      sign[i] = ((i + 1) * (2 * direction + 3)) % 7 < 4 ? 1.0 : -1.0;
+    }
+    const Vector step =
+        std::sqrt(2.0 * rise / static_cast<double>(at.size())) * factor.matrixU().solve(sign);
+    const double up = problem.evaluate(at + step, Want::value).value - here.value;
+    const double down = problem.evaluate(at - step, Want::value).value - here.value;
+    agree = agree && std::abs(0.5 * (up + down) - rise) < 0.5 * rise &&
+            std::abs(0.5 * (up - down)) < 0.25 * rise;
+  }
+  objective.evaluate(minimum.theta, Want::value);
+  return agree;
+}
+
 }  // namespace softsill

@@ -46,6 +46,12 @@ struct Minimum {
 /// its gradient g and its model Hessian H plus a small rank-one term. H is the observed information
 /// where that is positive definite, the expected one elsewhere. The end is polished by damped
 /// Newton steps and judged by the gate.
+/// The last part of the gate: do values of the function, not only its derivatives, say that this is
+/// a minimum? Steps of a fraction of a standard error both ways along three fixed directions must
+/// raise the value as the Hessian predicts, and equally. A gradient that is wrong by a constant
+/// passes the Newton decrement at its own wrong zero; it does not pass this.
+bool values_agree(Objective& objective, const Minimum& minimum, const std::vector<bool>& fixed);
+
 Minimum minimize(Objective& objective, const Vector& start, const MinimizerOptions& options = {});
 
 }  // namespace softsill

@@ -18,7 +18,7 @@ double block_length_ms(const Coordinates& coordinates) {
   return std::max(1000.0, coordinates.support_ms());
 }
 
-FitStatus status_of(const CellFit& fit) {
+FitStatus status_of(CellFit& fit) {
   const Minimum& minimum = fit.minimum;
   if (minimum.interrupted) {
     return FitStatus::interrupted;
@@ -27,13 +27,16 @@ FitStatus status_of(const CellFit& fit) {
     return FitStatus::failed;
   }
   const bool edge = std::any_of(fit.fixed.begin(), fit.fixed.end(), [](bool held) { return held; });
+  if (minimum.passed() && !values_agree(*fit.penalised, minimum, fit.fixed)) {
+    return FitStatus::not_converged;
+  }
   if (minimum.passed()) {
     return edge ? FitStatus::at_boundary : FitStatus::converged;
   }
   return minimum.passed(1e-3) ? FitStatus::converged_imprecise : FitStatus::not_converged;
 }
 
-void fill_bookkeeping(const CellFit& fit, Estimate& estimate) {
+void fill_bookkeeping(CellFit& fit, Estimate& estimate) {
   const Exposure& exposure = fit.exposure;
   estimate.status = status_of(fit);
   estimate.newton_decrement = fit.minimum.decrement;

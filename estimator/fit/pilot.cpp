@@ -117,6 +117,7 @@ Pilot run_pilot(const Variant& variant, const Exposure& exposure, int threads, P
   Penalised penalised(*pilot.objective, penalties);
   SmoothingOptions options;
   options.rounds = 3;
+  options.exact = false;
   options.minimizer.decrement = 1e-3;  // a pilot needs no more
   options.minimizer.keep_going = [&] { return progress.keep_going(); };
   pilot.minimum = choose_smoothing(penalised, start, options).minimum;

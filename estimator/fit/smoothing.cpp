@@ -109,11 +109,11 @@ Smoothed choose_smoothing(Penalised& objective, const Vector& start,
                          (log_lambda <= lowest_log_lambda && slopes.gradient[j] < 0.0);
       worst = std::max(worst, stuck ? 0.0 : std::abs(slopes.gradient[j]));
     }
-    if (worst < options.gradient && exact) {
+    if (worst < options.gradient && (exact || !options.exact)) {
       out.settled = true;
       break;
     }
-    if (worst < 10.0 * options.gradient && !exact) {
+    if (worst < 10.0 * options.gradient && !exact && options.exact) {
       exact = true;
       last_step.setZero();
       continue;

@@ -15,6 +15,8 @@ struct SmoothingOptions {
   /// Stop when no |dV/d log lambda| exceeds this (nats per unit of log lambda).
   double gradient = 0.05;
   int rounds = 60;
+  /// false leaves out the neglected term (plain Fellner-Schall): cheaper, a little off the maximum.
+  bool exact = true;
   MinimizerOptions minimizer;
   std::function<bool(int round)> progress;  ///< false stops
 };

@@ -209,5 +209,24 @@ TEST(Gate, AStopIsAStop) {
   EXPECT_FALSE(minimum.passed());
 }
 
+TEST(Gate, ValuesExposeABiasedGradient) {
+  Made objective = convex();
+  EXPECT_TRUE(values_agree(objective, minimize(objective, point(2.0, -1.0)), {}));
+  // Wrong by a constant: the decrement is 0 at the gradient's own zero, 0.7 standard errors off.
+  const auto right = objective.gradient;
+  objective.gradient = [right](const Vector& at) { return Vector(right(at) + point(10.0, 0.0)); };
+  const Minimum minimum = minimize(objective, point(0.0, 0.0));
+  EXPECT_TRUE(minimum.passed()) << minimum.report;
+  EXPECT_FALSE(values_agree(objective, minimum, {}));
+}
+
+TEST(Gate, ValuesExposeAWrongHessian) {
+  Made objective = convex();
+  const auto right = objective.hessian;
+  objective.hessian = [right](const Vector& at) { return Matrix(3.0 * right(at)); };
+  const Minimum minimum = minimize(objective, point(0.5, 0.2));
+  EXPECT_FALSE(values_agree(objective, minimum, {}));
+}
+
 }  // namespace
 }  // namespace softsill
