@@ -56,6 +56,20 @@ void say_undetermined_lags(Estimate& estimate) {
   }
 }
 
+/// Profile intervals that never close.
+void say_unbounded(Estimate& estimate) {
+  for (const NamedQuantity& row : estimate.parameters) {
+    const Quantity& quantity = row.quantity;
+    if (quantity.value && quantity.method == "profile likelihood" &&
+        !(quantity.low && quantity.high)) {
+      const char* side = quantity.low ? "upper" : quantity.high ? "lower" : "lower or upper";
+      estimate.limits.push_back(row.name + " has no " + side +
+                                " bound: the likelihood does not fall "
+                                "far enough on that side");
+    }
+  }
+}
+
 /// Splines are forced to 0 at the end of their support; a kernel that is clearly not 0 shortly
 /// before was cut off, and what is missing went into the constants.
 void say_unfinished(const CellFit& fit, Estimate& estimate) {
@@ -307,6 +321,7 @@ void describe_limits(CellFit& fit, Estimate& estimate) {
   say_undetermined_lags(estimate);
   say_unfinished(fit, estimate);
   say_twins(fit, estimate);
+  say_unbounded(estimate);
   say_ties(fit, estimate);
   say_flat_direction(fit, estimate);
   say_saturation(fit, estimate);

@@ -128,6 +128,12 @@ Vector residual_weights(const Vector& v) {
   return a;
 }
 
+/// The potential without the drop over the resistance that the user told us of.
+double corrected_mV(const Sweep& sweep, std::size_t sample, const SeriesResistance& resistance) {
+  const double drop = resistance.fit ? 0.0 : resistance.value_MOhm * sweep.input[sample];
+  return sweep.voltage_mV[sample] - drop;
+}
+
 double log_cosh(double z) {
   const double a = std::abs(z);
   return a + std::log1p(std::exp(-2.0 * a)) - std::numbers::ln2;
@@ -169,7 +175,7 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
         runs_of(sweep, sweep.start_ms + lead_in_ms, stride, variant, block_ms, blocks);
     for (const Run& run : runs) {
       for (std::size_t i = 0; i < run.count; ++i) {
-        sum += sweep.voltage_mV[run.first_sample + i * stride];
+        sum += corrected_mV(sweep, run.first_sample + i * stride, recording.series_resistance);
       }
       samples += static_cast<double>(run.count);
     }
@@ -202,7 +208,8 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
     std::vector<double> voltage;
     auto take = [&](std::size_t sample) {
       times.push_back(sweep.start_ms + sweep.step_ms * static_cast<double>(sample));
-      voltage.push_back(sweep.voltage_mV[sample] - statistics.reference_mV);
+      voltage.push_back(corrected_mV(sweep, sample, recording.series_resistance) -
+                        statistics.reference_mV);
     };
     const bool continues = !piece.runs.front().starts_segment;
     if (continues) {
