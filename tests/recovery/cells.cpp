@@ -127,7 +127,9 @@ Sweep record(const Cell& cell, const Protocol& protocol, std::uint64_t seed,
       const double middle_u =
           cell.resting_potential_mV + drive + (v - drive) * membrane_half + eta.sum(eta_half);
       const double middle_theta = cell.threshold_mV + theta_1.sum(theta_half);
-      const double hazard = std::exp((middle_u - middle_theta) / cell.noise_level_mV);
+      const double x = (middle_u - middle_theta) / cell.noise_level_mV;
+      const double hazard =
+          cell.exponent > 0.0 ? std::pow(std::log1p(std::exp(x)), cell.exponent) : std::exp(x);
       const double from = std::max(begin, safe_until);
       v = drive + (v - drive) * membrane;
       eta.advance();

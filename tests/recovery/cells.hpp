@@ -31,6 +31,7 @@ struct Cell {
   double threshold_mV = -48.0;
   double noise_level_mV = 1.5;
   double refractory_ms = 2.0;
+  double exponent = 0.0;  ///< 0: exponential escape function; else log(1 + exp x)^exponent
 
   double kappa(double lag_ms) const;  ///< mV/(nA ms)
 };
