@@ -12,7 +12,7 @@
 namespace softsill {
 namespace {
 
-constexpr double change_per_cell = 0.7;  // of log hazard within one two-point cell
+constexpr double first_node_share = 0.5;  // of the allowed error of the nodes
 
 double block_length_ms(const Coordinates& coordinates) {
   return std::max(1000.0, coordinates.support_ms());
@@ -71,11 +71,10 @@ void build_likelihood(CellFit& fit, const Pilot& pilot, double lead_in_ms, Progr
     statistics = gather(coordinates.voltage_columns());
   }
   progress.at(0.3, "placing nodes");
-  NodePlan plan{
-      &fit.exposure,
-      place_nodes(refined_cells(pilot.objective->plan().nodes, pilot.at_nodes, change_per_cell,
-                                static_cast<double>(fit.exposure.spikes))),
-      block_ms};
+  NodePlan plan{&fit.exposure,
+                place_nodes(refined_cells(pilot.objective->plan().nodes, pilot.at_nodes,
+                                          first_node_share * allowed_node_error(fit.exposure))),
+                block_ms};
   fit.fixed.assign(coordinates.size(), false);
   fit.likelihood = std::make_unique<CellObjective>(std::move(coordinates), std::move(plan),
                                                    std::move(statistics), threads);

@@ -66,6 +66,8 @@ void try_other_softness(CellFit& fit);
 /// Coordinates that ran to an edge are held there and the rest fitted again.
 void hold_edges(CellFit& fit);
 
+/// Expected spikes that the nodes may be off by: 0.02 sqrt(spikes).
+double allowed_node_error(const Exposure& exposure);
 /// Refines the nodes until their measured error is small, fitting again each time.
 void settle_nodes(CellFit& fit, Progress& progress);
 

@@ -3,6 +3,7 @@
 #include <numeric>
 
 #include "estimator/fit/fit_steps.hpp"
+#include "estimator/fit/parallel.hpp"
 
 namespace softsill {
 namespace {
@@ -23,18 +24,30 @@ struct IntegralTerms {
   Vector gradient;
 };
 
-IntegralTerms integral_terms(const RowMatrix& rows, const Vector& weights, const Mapped& m) {
+IntegralTerms integral_terms(const RowMatrix& rows, const Vector& weights, const Mapped& m,
+                             int threads) {
+  constexpr Eigen::Index rows_per_piece = 8192;
   const Eigen::Index width = rows.cols();
-  IntegralTerms out{rows * m.beta, Vector::Zero(width + 2)};
-  Vector slope(rows.rows());
-  for (Eigen::Index i = 0; i < rows.rows(); ++i) {
-    const EscapeDerivatives e = escape_at(m.escape, out.rate[i]);
-    out.rate[i] = e.rate;
-    slope[i] = weights[i] * e.rate_x;
-    out.gradient[width] += weights[i] * e.rate;
-    out.gradient[width + 1] += weights[i] * e.rate_n;
-  }
-  out.gradient.head(width) = rows.transpose() * slope;
+  const Eigen::Index pieces = (rows.rows() + rows_per_piece - 1) / rows_per_piece;
+  IntegralTerms out{Vector(rows.rows()), Vector::Zero(width + 2)};
+  Matrix gradients = Matrix::Zero(width + 2, pieces);
+  parallel_for(threads, static_cast<std::size_t>(pieces), [&](std::size_t index) {
+    const auto piece = static_cast<Eigen::Index>(index);
+    const Eigen::Index first = piece * rows_per_piece;
+    const Eigen::Index count = std::min(rows_per_piece, rows.rows() - first);
+    const auto part = rows.middleRows(first, count);
+    Vector slope = part * m.beta;
+    for (Eigen::Index i = 0; i < count; ++i) {
+      const EscapeDerivatives e = escape_at(m.escape, slope[i]);
+      const double w = weights[first + i];
+      out.rate[first + i] = e.rate;
+      slope[i] = w * e.rate_x;
+      gradients(width, piece) += w * e.rate;
+      gradients(width + 1, piece) += w * e.rate_n;
+    }
+    gradients.col(piece).head(width) = part.transpose() * slope;
+  });
+  out.gradient = gradients.rowwise().sum();
   return out;
 }
 
@@ -70,17 +83,17 @@ NodeCheck check_nodes(CellFit& fit) {
   const NodeSet& nodes = likelihood.plan().nodes;
   NodeCheck check;
   check.error.nodes = nodes.size();
-  check.error.allowed =
-      allowed_integral_error * std::sqrt(static_cast<double>(fit.exposure.spikes));
+  check.error.allowed = allowed_node_error(fit.exposure);
   Vector weights = likelihood.design().weights_ms;
-  const std::vector<double> coarse =
-      cell_integrals(nodes, integral_terms(likelihood.design().nodes, weights, m).rate);
+  const std::vector<double> coarse = cell_integrals(
+      nodes, integral_terms(likelihood.design().nodes, weights, m, likelihood.threads()).rate);
   const std::vector<bool> chosen = cells_that_matter(coarse, check.error.allowed);
   NodePlan plan = likelihood.plan();
   plan.nodes = place_nodes(finer_cells(only(nodes.cells, chosen)));
   const SpikeDesign finer =
       make_design(likelihood.coordinates().spike_columns(), plan, likelihood.threads());
-  const IntegralTerms fine_terms = integral_terms(finer.nodes, finer.weights_ms, m);
+  const IntegralTerms fine_terms =
+      integral_terms(finer.nodes, finer.weights_ms, m, likelihood.threads());
   const std::vector<double> fine = cell_integrals(plan.nodes, fine_terms.rate);
   check.cell_difference.assign(coarse.size(), 0.0);
   std::size_t part = 0, index = 0;
@@ -105,7 +118,8 @@ NodeCheck check_nodes(CellFit& fit) {
   }
   check.error.expected_spikes_error = std::abs(total);
   const Vector score_change =
-      integral_terms(likelihood.design().nodes, weights, m).gradient - fine_terms.gradient;
+      integral_terms(likelihood.design().nodes, weights, m, likelihood.threads()).gradient -
+      fine_terms.gradient;
   const Vector shift = fit.covariance * (m.beta_jacobian.transpose() * score_change);
   for (Eigen::Index i = 0; i < shift.size(); ++i) {
     if (fit.covariance(i, i) > 0.0) {
@@ -135,6 +149,10 @@ std::vector<bool> worst_cells(const NodeCheck& check) {
 }
 
 }  // namespace
+
+double allowed_node_error(const Exposure& exposure) {
+  return allowed_integral_error * std::sqrt(static_cast<double>(exposure.spikes));
+}
 
 void settle_nodes(CellFit& fit, Progress& progress) {
   for (int round = 0;; ++round) {

@@ -38,12 +38,14 @@ std::vector<SweepCells> graded_cells(const Exposure& exposure, double longest_ms
 NodeSet place_nodes(std::vector<SweepCells> cells);
 
 /// Cells for the next fit, from the linear predictor x of a pilot fit at the midpoints of
-/// `pilot.cells` (all of CellRule::midpoint): a cell is split so that x changes by at most
-/// `largest_change` within a part; where it holds hardly any of the `expected_spikes`, even at its
-/// neighbours' hazard, it is kept whole, and joined to its neighbours where it holds none.
-/// \param predictor log hazard (1/ms) at the pilot's nodes
+/// `pilot.cells` (all of CellRule::midpoint). Every cell gets the cheapest rule whose estimated
+/// error stays within an equal share of the whole: one midpoint (error about L x'^2 / 24 for L
+/// expected spikes and a change x' of log hazard across the cell), or two Gauss points in one or
+/// more parts (about L x'^4 / 4320). Cells that hold nothing are joined. \param predictor log
+/// hazard (1/ms) at the pilot's nodes \param total_error expected spikes that all cells together
+/// may be off by
 std::vector<SweepCells> refined_cells(const NodeSet& pilot, const Vector& predictor,
-                                      double largest_change, double expected_spikes);
+                                      double total_error);
 
 /// Every cell made finer: a midpoint cell gets the two-point rule, others are cut into halves.
 std::vector<SweepCells> finer_cells(const std::vector<SweepCells>& cells);
