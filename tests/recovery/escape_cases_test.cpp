@@ -4,11 +4,19 @@
 
 #include <algorithm>
 #include <cstdio>
+#include <ostream>
 #include <string>
 #include <tuple>
 
 #include "softsill/fit.hpp"
 #include "tests/recovery/cells.hpp"
+
+namespace softsill {
+
+/// How googletest names a parameter.
+void PrintTo(EscapeKind kind, std::ostream* out) { *out << to_string(kind); }
+
+}  // namespace softsill
 
 namespace softsill::test {
 namespace {
