@@ -146,7 +146,8 @@ TEST(ClosedForms, TwoLevelCurrentThroughTheQuadrature) {
     const Exposure exposure = make_exposure(recording, variant.refractory, 0.0, options);
     for (CellRule rule : {CellRule::midpoint, CellRule::two_point}) {
       NodePlan plan{&exposure, place_nodes(graded_cells(exposure, 3.3, rule)), 1000.0};
-      CellObjective objective(Coordinates(variant, false, false), std::move(plan), {}, 1);
+      CellObjective objective(Coordinates(variant, false, false), std::move(plan),
+                              VoltageStatistics{}, 1);
       expect_two_levels(settled(objective, (Vector(2) << -6.0, 0.0).finished()), 7.0);
     }
   }
