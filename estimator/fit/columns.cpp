@@ -35,8 +35,11 @@ void Columns::add(ColumnBlock block) {
   blocks.push_back(std::move(block));
 }
 
-RowFiller::RowFiller(const Columns& columns, const SweepExposure& exposure)
-    : columns_(columns), exposure_(exposure), checkpoints_(columns.blocks.size()) {
+RowFiller::RowFiller(const Columns& columns, const SweepExposure& exposure, std::size_t stride)
+    : columns_(columns),
+      exposure_(exposure),
+      stride_(stride == 0 ? columns.width : stride),
+      checkpoints_(columns.blocks.size()) {
   const Sweep& sweep = *exposure.sweep;
   const auto every = static_cast<std::size_t>(std::max(1.0, checkpoint_ms / sweep.step_ms));
   for (std::size_t i = 0; i < columns.blocks.size(); ++i) {
@@ -69,7 +72,7 @@ void RowFiller::fill_exponentials(const ColumnBlock& block, std::span<const doub
     }
     for (std::size_t i = 0; i < times_ms.size(); ++i) {
       const double* m = moments.data() + static_cast<std::size_t>(orders) * i;
-      double* row = out + i * columns_.width + block.first;
+      double* row = out + i * stride_ + block.first;
       row[k] = m[0];
       if (block.derivatives) {
         row[n + k] = m[1] / tau;
@@ -88,7 +91,7 @@ void RowFiller::fill(std::span<const double> times_ms, double* out) const {
     }
     if (block.kind == ColumnBlock::Kind::one) {
       for (std::size_t i = 0; i < times_ms.size(); ++i) {
-        out[i * columns_.width + block.first] = 1.0;
+        out[i * stride_ + block.first] = 1.0;
       }
       continue;
     }
@@ -97,7 +100,7 @@ void RowFiller::fill(std::span<const double> times_ms, double* out) const {
       for (std::size_t i = 0; i < times_ms.size(); ++i) {
         // Half a rounding error must not pick the sample before.
         const double position = (times_ms[i] - sweep.start_ms) / sweep.step_ms + 1e-6;
-        out[i * columns_.width + block.first] =
+        out[i * stride_ + block.first] =
             sweep.input[static_cast<std::size_t>(std::clamp(std::floor(position), 0.0, last))];
       }
       continue;
@@ -113,7 +116,7 @@ void RowFiller::fill(std::span<const double> times_ms, double* out) const {
     } else {
       history_responses(block.basis, sweep.spikes_ms, times_ms, buffer);
     }
-    place(buffer, block.width(), block.first, columns_.width, out);
+    place(buffer, block.width(), block.first, stride_, out);
   }
 }
 
@@ -122,7 +125,7 @@ void RowFiller::fill(std::span<const double> times_ms, double* out, int threads)
   parallel_for(threads, pieces, [&](std::size_t piece) {
     const std::size_t first = piece * rows_per_piece;
     const std::size_t count = std::min(rows_per_piece, times_ms.size() - first);
-    fill(times_ms.subspan(first, count), out + first * columns_.width);
+    fill(times_ms.subspan(first, count), out + first * stride_);
   });
 }
 

@@ -44,9 +44,11 @@ struct Columns {
 /// Fills rows of one sweep. What a column needs to know of the whole sweep is worked out once.
 class RowFiller {
  public:
-  RowFiller(const Columns& columns, const SweepExposure& exposure);
+  /// \param stride doubles from one row to the next, at least columns.width; 0: columns.width
+  RowFiller(const Columns& columns, const SweepExposure& exposure, std::size_t stride = 0);
 
-  /// Rows at sorted times; `out` has times_ms.size() rows of columns.width. The block Kind::current
+  /// Rows at sorted times; `out` has times_ms.size() rows of `stride` doubles, of which
+  /// the first columns.width are written. The block Kind::current
   /// holds the driving signal itself at the time (residual series resistance).
   void fill(std::span<const double> times_ms, double* out) const;
   /// The same over several threads; the result does not depend on `threads`.
@@ -58,6 +60,7 @@ class RowFiller {
 
   const Columns& columns_;
   const SweepExposure& exposure_;
+  std::size_t stride_;
   /// Of input exponentials, per block and time constant.
   std::vector<std::vector<ExponentialCheckpoints>> checkpoints_;
 };

@@ -134,8 +134,17 @@ void check_kappa(CellFit& fit, Estimate& estimate) {
     return;
   }
   const ByVoltage voltage = kappa_by_voltage(fit);
-  CellObjective spikes(Coordinates(frozen_variant(fit), false, false), fit.likelihood->plan(),
-                       VoltageStatistics{}, fit.likelihood->threads());
+  Coordinates alone(frozen_variant(fit), false, false);
+  const int threads = fit.likelihood->threads();
+  // A shared after-spike basis gives the joint fit the very columns that spikes alone have.
+  const bool same =
+      alone.spike_columns().width == fit.coordinates().spike_columns().width &&
+      fit.coordinates().free_time_constants() == 0 &&
+      fit.coordinates().spike_columns().blocks.size() == alone.spike_columns().blocks.size();
+  CellObjective spikes =
+      same ? CellObjective(std::move(alone), fit.likelihood->plan(), fit.likelihood->design(),
+                           threads)
+           : CellObjective(std::move(alone), fit.likelihood->plan(), VoltageStatistics{}, threads);
   const KernelPart& k = *spikes.coordinates().part("kappa");
   const auto first = static_cast<Eigen::Index>(k.first);
   const auto n = static_cast<Eigen::Index>(k.size());

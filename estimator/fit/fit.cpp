@@ -92,9 +92,9 @@ void maximise(CellFit& fit, const Pilot& pilot, Progress& progress) {
   std::vector<Penalty> penalties = penalties_for(fit.coordinates(), information);
   prepare_penalties(fit, pilot, start, penalties);
   fit.penalised = std::make_unique<Penalised>(*fit.likelihood, std::move(penalties));
-  start = threshold_first(fit, start);
   const bool many = needs_starts(fit.coordinates(), *fit.variant);
   if (many) {
+    start = threshold_first(fit, start);
     try_starts(fit, pilot, start, progress);
     start = fit.minimum.theta;
   }

@@ -244,7 +244,7 @@ void say_misspecification(const CellFit& fit, Estimate& estimate) {
 void say_saturation(const CellFit& fit, Estimate& estimate) {
   const Mapped m = fit.coordinates().map(fit.minimum.theta);
   const SpikeDesign& design = fit.likelihood->design();
-  const Vector x = design.nodes * m.beta;
+  const Vector x = predictor(design.nodes, m.beta);
   double total = 0.0, saturated = 0.0;
   for (Eigen::Index i = 0; i < x.size(); ++i) {
     const double rate = escape_rate(m.escape, x[i]);

@@ -27,7 +27,7 @@ struct IntegralTerms {
 IntegralTerms integral_terms(const RowMatrix& rows, const Vector& weights, const Mapped& m,
                              int threads) {
   constexpr Eigen::Index rows_per_piece = 8192;
-  const Eigen::Index width = rows.cols();
+  const Eigen::Index width = m.beta.size();
   const Eigen::Index pieces = (rows.rows() + rows_per_piece - 1) / rows_per_piece;
   IntegralTerms out{Vector(rows.rows()), Vector::Zero(width + 2)};
   Matrix gradients = Matrix::Zero(width + 2, pieces);
@@ -35,7 +35,7 @@ IntegralTerms integral_terms(const RowMatrix& rows, const Vector& weights, const
     const auto piece = static_cast<Eigen::Index>(index);
     const Eigen::Index first = piece * rows_per_piece;
     const Eigen::Index count = std::min(rows_per_piece, rows.rows() - first);
-    const auto part = rows.middleRows(first, count);
+    const auto part = rows.block(first, 0, count, width);
     Vector slope = part * m.beta;
     for (Eigen::Index i = 0; i < count; ++i) {
       const EscapeDerivatives e = escape_at(m.escape, slope[i]);

@@ -3,6 +3,7 @@
 #include <cmath>
 
 #include "estimator/fit/parallel.hpp"
+#include "estimator/fit/row_sums.hpp"
 
 namespace softsill {
 
@@ -58,9 +59,10 @@ Matrix Penalised::penalty_matrix() const {
 
 SpikeDesign make_design(const Columns& columns, const NodePlan& plan, int threads) {
   SpikeDesign design;
-  const auto width = static_cast<Eigen::Index>(columns.width);
-  design.nodes.resize(static_cast<Eigen::Index>(plan.nodes.size()), width);
-  design.spikes.resize(static_cast<Eigen::Index>(plan.exposure->spikes), width);
+  const auto width = static_cast<Eigen::Index>(padded_width(columns.width));
+  design.columns = static_cast<Eigen::Index>(columns.width);
+  design.nodes.setZero(static_cast<Eigen::Index>(plan.nodes.size()), width);
+  design.spikes.setZero(static_cast<Eigen::Index>(plan.exposure->spikes), width);
   design.weights_ms = Eigen::Map<const Vector>(plan.nodes.weights_ms.data(),
                                                static_cast<Eigen::Index>(plan.nodes.size()));
   Eigen::Index node = 0, spike = 0;
@@ -68,7 +70,7 @@ SpikeDesign make_design(const Columns& columns, const NodePlan& plan, int thread
   for (std::size_t i = 0; i < plan.exposure->sweeps.size(); ++i) {
     const SweepExposure& part = plan.exposure->sweeps[i];
     const std::vector<double>& times = plan.nodes.times_ms[i];
-    const RowFiller filler(columns, part);
+    const RowFiller filler(columns, part, static_cast<std::size_t>(width));
     filler.fill(times, design.nodes.data() + node * width, threads);
     filler.fill(part.spikes_ms, design.spikes.data() + spike * width, threads);
     auto block_of = [&](double t) {
@@ -96,6 +98,13 @@ CellObjective::CellObjective(Coordinates coordinates, NodePlan plan, VoltageStat
       threads_(threads) {
   design_ = make_design(coordinates_.spike_columns(), plan_, threads_);
 }
+
+CellObjective::CellObjective(Coordinates coordinates, NodePlan plan, SpikeDesign design,
+                             int threads)
+    : coordinates_(std::move(coordinates)),
+      plan_(std::move(plan)),
+      design_(std::move(design)),
+      threads_(threads) {}
 
 void CellObjective::set_nodes(NodeSet nodes) {
   plan_.nodes = std::move(nodes);

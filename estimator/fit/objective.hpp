@@ -80,6 +80,9 @@ class CellObjective : public Objective {
   /// \param statistics empty for spikes alone
   CellObjective(Coordinates coordinates, NodePlan plan, VoltageStatistics statistics, int threads);
 
+  /// The same nodes under other coordinates whose spike columns are the same.
+  CellObjective(Coordinates coordinates, NodePlan plan, SpikeDesign design, int threads);
+
   Eigen::Index size() const override { return static_cast<Eigen::Index>(coordinates_.size()); }
   Evaluated evaluate(const Vector& theta, Want want) override;
 

@@ -124,8 +124,8 @@ Pilot run_pilot(const Variant& variant, const Exposure& exposure, int threads, P
   pilot.penalties = penalised.penalties();
   progress.tick();
   const Mapped mapped = pilot.objective->coordinates().map(pilot.minimum.theta);
-  pilot.at_nodes = pilot.objective->design().nodes * mapped.beta;
-  pilot.at_spikes = pilot.objective->design().spikes * mapped.beta;
+  pilot.at_nodes = predictor(pilot.objective->design().nodes, mapped.beta);
+  pilot.at_spikes = predictor(pilot.objective->design().spikes, mapped.beta);
   return pilot;
 }
 

@@ -166,10 +166,10 @@ void add_squares(const double* rows, const double* weight, std::size_t count, st
   squares_body<Two>(rows, weight, count, width, scratch, square);
 }
 
-void pack_rows(const double* from, std::size_t count, std::size_t columns, std::size_t width,
-               double* to) {
+void pack_rows(const double* from, std::size_t count, std::size_t columns, std::size_t stride,
+               std::size_t width, double* to) {
   for (std::size_t i = 0; i < count; ++i) {
-    std::copy_n(from + i * columns, columns, to + i * width);
+    std::copy_n(from + i * stride, columns, to + i * width);
     std::fill(to + i * width + columns, to + (i + 1) * width, 0.0);
   }
 }

@@ -28,8 +28,8 @@ void add_rows(const double* rows, const double* weight, std::size_t count, std::
 void add_squares(const double* rows, const double* weight, std::size_t count, std::size_t width,
                  double* scratch, double* square);
 
-/// Copies `count` rows of `columns` doubles into padded rows.
-void pack_rows(const double* from, std::size_t count, std::size_t columns, std::size_t width,
-               double* to);
+/// Copies the first `columns` doubles of `count` rows, `stride` apart, into padded rows.
+void pack_rows(const double* from, std::size_t count, std::size_t columns, std::size_t stride,
+               std::size_t width, double* to);
 
 }  // namespace softsill

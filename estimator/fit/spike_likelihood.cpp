@@ -227,22 +227,29 @@ class Sums {
 template <typename MakeTerm>
 void sum_rows(const RowMatrix& rows, Eigen::Index first, Eigen::Index end, const Escape& escape,
               const Vector& beta, MakeTerm&& make_term, Sums& sums) {
-  const auto columns = static_cast<std::size_t>(rows.cols());
-  std::vector<double> packed(static_cast<std::size_t>(rows_per_pass) * sums.padded());
+  const auto columns = static_cast<std::size_t>(beta.size());
+  const auto stride = static_cast<std::size_t>(rows.cols());
+  const bool in_place = stride == sums.padded();
+  std::vector<double> packed(in_place ? 0
+                                      : static_cast<std::size_t>(rows_per_pass) * sums.padded());
   std::vector<double> x(static_cast<std::size_t>(rows_per_pass));
   std::vector<double> padded_beta(sums.padded(), 0.0);
   std::copy_n(beta.data(), columns, padded_beta.data());
   std::vector<Term> terms;
   for (Eigen::Index row = first; row < end; row += rows_per_pass) {
     const auto count = static_cast<std::size_t>(std::min(rows_per_pass, end - row));
-    pack_rows(rows.data() + row * rows.cols(), count, columns, sums.padded(), packed.data());
-    dot_rows(packed.data(), count, sums.padded(), padded_beta.data(), x.data());
+    const double* pass = rows.data() + row * rows.cols();
+    if (!in_place) {
+      pack_rows(pass, count, columns, stride, sums.padded(), packed.data());
+      pass = packed.data();
+    }
+    dot_rows(pass, count, sums.padded(), padded_beta.data(), x.data());
     terms.resize(count);
     for (std::size_t i = 0; i < count; ++i) {
       terms[i] = make_term(escape_at(escape, x[i]), row + static_cast<Eigen::Index>(i));
     }
     // The exponential has no own parameter to fit, and is the common case.
-    sums.add(packed.data(), terms, escape.kind != EscapeKind::exponential);
+    sums.add(pass, terms, escape.kind != EscapeKind::exponential);
   }
   sums.finish();
 }
@@ -308,15 +315,19 @@ SpikeEvaluation evaluate_spikes(const SpikeDesign& design, const Escape& escape,
   return out;
 }
 
+Vector predictor(const RowMatrix& rows, const Vector& beta) {
+  return rows.leftCols(beta.size()) * beta;
+}
+
 Matrix block_scores(const SpikeDesign& design, const Escape& escape, const Vector& beta) {
   const Eigen::Index width = design.width();
   Matrix scores = Matrix::Zero(design.blocks, width + 2);
   auto add = [&](const RowMatrix& rows, const std::vector<int>& blocks, auto&& make_term) {
-    const Vector x = rows * beta;
+    const Vector x = predictor(rows, beta);
     for (Eigen::Index i = 0; i < rows.rows(); ++i) {
       const Term t = make_term(escape_at(escape, x[i]), i);
       const int block = blocks[static_cast<std::size_t>(i)];
-      scores.row(block).head(width) += t.x * rows.row(i);
+      scores.row(block).head(width) += t.x * rows.row(i).head(width);
       scores(block, width) += t.l;
       scores(block, width + 1) += t.n;
     }

@@ -19,6 +19,8 @@ namespace softsill {
 
 /// Everything the data contribute, as plain arrays.
 struct SpikeDesign {
+  /// One row per quadrature node (or empty bin). Rows padded with zeros to padded_width(columns)
+  /// are read in place; others are copied on every evaluation.
   RowMatrix nodes;               ///< one row per quadrature node (or empty bin)
   Vector weights_ms;             ///< of the nodes
   RowMatrix spikes;              ///< one row per spike (or bin with a spike)
@@ -27,7 +29,9 @@ struct SpikeDesign {
   std::vector<int> spike_blocks;
   int blocks = 0;
 
-  Eigen::Index width() const { return nodes.cols(); }
+  Eigen::Index columns = 0;  ///< true width of a row; 0: rows are not padded
+
+  Eigen::Index width() const { return columns > 0 ? columns : nodes.cols(); }
 };
 
 /// Value and derivatives by the coordinates (beta, log lambda_0, log n); matrices are symmetric and
@@ -46,6 +50,9 @@ enum class Want { value, gradient, derivatives, derivatives_and_expected };
 /// Deterministic for any number of threads.
 SpikeEvaluation evaluate_spikes(const SpikeDesign& design, const Escape& escape, const Vector& beta,
                                 Want want, int threads);
+
+/// rows . beta for rows that may be padded.
+Vector predictor(const RowMatrix& rows, const Vector& beta);
 
 /// Score of each time block, blocks x (width + 2), same coordinates.
 Matrix block_scores(const SpikeDesign& design, const Escape& escape, const Vector& beta);

@@ -16,7 +16,7 @@ void calibrate_constant(const CellObjective& objective, std::size_t spikes, Vect
   const Coordinates& coordinates = objective.coordinates();
   const Mapped m = coordinates.map(theta);
   const SpikeDesign& design = objective.design();
-  const Vector x = design.nodes * m.beta;
+  const Vector x = predictor(design.nodes, m.beta);
   auto expected = [&](double shift) {
     double sum = 0.0;
     for (Eigen::Index i = 0; i < x.size(); ++i) {
@@ -146,7 +146,7 @@ void try_other_softness(CellFit& fit) {
   Vector start = fit.minimum.theta;
   // A harder threshold with the same hazard where it fires: x -> 1.5 (x - mean) + mean.
   const double at_spikes =
-      (fit.likelihood->design().spikes * fit.coordinates().map(start).beta).mean();
+      predictor(fit.likelihood->design().spikes, fit.coordinates().map(start).beta).mean();
   start[b] *= other_softness;
   for (std::size_t i = 0; i < fit.coordinates().size(); ++i) {
     if (fit.coordinates().names()[i].rfind("theta_1[", 0) == 0) {

@@ -179,7 +179,8 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
       }
       samples += static_cast<double>(run.count);
     }
-    const auto filler = std::make_shared<const RowFiller>(columns, part);
+    const auto filler =
+        std::make_shared<const RowFiller>(columns, part, padded_width(static_cast<std::size_t>(n)));
     // One piece of work per time block, led by whether its first run continues the one before.
     for (std::size_t i = 0; i < runs.size();) {
       std::size_t end = i;
@@ -220,11 +221,9 @@ VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposur
         take(run.first_sample + i * piece.stride);
       }
     }
-    RowMatrix rows(static_cast<Eigen::Index>(times.size()), n - 1);
-    piece.filler->fill(times, rows.data());
     PairSums sums(static_cast<std::size_t>(n));
-    std::vector<double> z(times.size() * sums.width);
-    pack_rows(rows.data(), times.size(), static_cast<std::size_t>(n) - 1, sums.width, z.data());
+    std::vector<double> z(times.size() * sums.width, 0.0);
+    piece.filler->fill(times, z.data());
     for (std::size_t i = 0; i < times.size(); ++i) {
       z[i * sums.width + static_cast<std::size_t>(n) - 1] = voltage[i];
     }
