@@ -5,6 +5,7 @@
 #include <cstdio>
 #include <limits>
 #include <numeric>
+#include <utility>
 
 #include "metrics/inference/intervals.hpp"
 #include "metrics/inference/normal.hpp"
@@ -230,6 +231,14 @@ void find_interval(Bootstrap& result, const inner::Recipe& recipe) {
 
 }  // namespace
 
+std::optional<std::string> coverage_warning(std::size_t trials, IntervalMethod method) {
+  if (trials >= 20) {
+    return {};
+  }
+  return "with " + std::to_string(trials) + " trials a 95 % " + name_of(method) +
+         " interval may hold the truth less often than it says";
+}
+
 std::vector<double> draw_weights(std::size_t units, const Resampling& resampling,
                                  std::uint64_t seed, std::size_t replicate, int group) {
   check(resampling, units);
@@ -304,6 +313,14 @@ Bootstrap bootstrap(std::size_t first_units, std::size_t second_units,
   result.bias = sum / count;
   result.standard_error = std::sqrt(std::max(0.0, (squares - sum * sum / count) / (count - 1.0)));
   find_interval(result, recipe);
+  for (const auto& [units, resampling] :
+       {std::pair(first_units, options.first), std::pair(second_units, options.second)}) {
+    if (units > 0 && resampling.kind == Resampling::Kind::independent && result.interval) {
+      if (const auto warning = coverage_warning(units, options.method)) {
+        result.warnings.push_back(*warning);
+      }
+    }
+  }
   return result;
 }
 

@@ -116,6 +116,11 @@ double bias_correction(std::span<const double> replicates, double estimate);
 /// Standard error from values with one unit left out at a time (Efron & Stein 1981).
 double jackknife_error(std::span<const double> left_out);
 
+/// What to tell the reader of an interval from so few trials, by coverage found in simulation
+/// (tests/metrics/coverage_test.cpp); empty where 95 % intervals hold what they promise.
+/// bootstrap() adds it to its warnings.
+std::optional<std::string> coverage_warning(std::size_t trials, IntervalMethod method);
+
 /// "BCa", "percentile", ...
 std::string name_of(IntervalMethod method);
 

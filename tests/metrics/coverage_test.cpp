@@ -1,0 +1,79 @@
+// How often 95 % intervals hold the truth, on simulated cells with 5, 10 and 20 trials.
+#include <gtest/gtest.h>
+
+#include <cmath>
+#include <cstdio>
+#include <numbers>
+
+#include "softsill/metrics/psth.hpp"
+#include "softsill/metrics/reliability.hpp"
+#include "tests/metrics/poisson_trains.hpp"
+
+namespace softsill::metrics {
+namespace {
+
+// Fluctuating rate with a law of its own: sums of sines at unrelated periods.
+double rate_hz(double t) {
+  const double drive = std::sin(t / 7.0) + std::sin(t / 11.3 + 1.0) + std::sin(t / 23.1 + 2.0);
+  return std::min(200.0, 12.0 * std::exp(drive));
+}
+
+// The model misses the slowest part.
+double model_rate_hz(double t) {
+  const double drive = std::sin(t / 7.0) + std::sin(t / 11.3 + 1.0);
+  return std::min(200.0, 14.0 * std::exp(drive));
+}
+
+constexpr double length_ms = 2000.0;
+const PsthSettings psth{PsthSettings::Kind::bins, 5.0, 1.0};
+
+PairTable table_of(int quantity, const TrialSet& cell, const TrialSet& model) {
+  if (quantity == 2) {
+    return covariance_table(rate_table(cell, psth), rate_table(model, psth));
+  }
+  return pair_table(quantity == 0 ? PairMeasure::coincidence : PairMeasure::victor_purpura, cell,
+                    model);
+}
+
+// Truth: 600 trials of each, whose error is far below the width of an interval from 20.
+TEST(Coverage, OfTheDefaultIntervals) {
+  const char* const names[] = {"Gamma", "Victor-Purpura", "explained variance"};
+  RandomStream truth_random(1, 0);
+  const TrialSet cell_truth = modulated_trials(600, length_ms, 200.0, rate_hz, truth_random);
+  const TrialSet model_truth = modulated_trials(600, length_ms, 200.0, model_rate_hz, truth_random);
+  for (int quantity = 0; quantity < 3; ++quantity) {
+    const PairTable whole = table_of(quantity, cell_truth, model_truth);
+    const PairMeans means = whole.means();
+    const double truth = quantity == 2
+                             ? (2.0 * *means.cell_model - *means.model_model) / *means.cell_cell
+                             : *means.cell_model;
+    for (const std::size_t trials : {5u, 10u, 20u}) {
+      const int rounds = 600;
+      int held = 0;
+      for (int round = 0; round < rounds; ++round) {
+        RandomStream random(100 + trials, static_cast<std::uint64_t>(round));
+        const TrialSet cell = modulated_trials(trials, length_ms, 200.0, rate_hz, random);
+        const TrialSet model = modulated_trials(100, length_ms, 200.0, model_rate_hz, random);
+        BootstrapOptions options;
+        options.seed = static_cast<std::uint64_t>(round);
+        options.replicates = 1000;
+        const Bootstrap result = bootstrap_pairs(
+            table_of(quantity, cell, model),
+            quantity == 2 ? PairStatistic::explained_variance : PairStatistic::cell_model, options);
+        held += result.interval && result.interval->low <= truth && truth <= result.interval->high;
+        // Where coverage is not kept, the program has to say so.
+        const bool warned = coverage_warning(trials, options.method).has_value();
+        ASSERT_EQ(warned, trials < 20);
+      }
+      const double share = static_cast<double>(held) / rounds;
+      std::printf("%s, %zu trials: %.1f %%\n", names[quantity], trials, 100.0 * share);
+      if (!coverage_warning(trials, IntervalMethod::bca)) {
+        EXPECT_GE(share, 0.92) << names[quantity] << ", " << trials << " trials";
+      }
+      EXPECT_LE(share, 0.97) << names[quantity] << ", " << trials << " trials";
+    }
+  }
+}
+
+}  // namespace
+}  // namespace softsill::metrics
