@@ -4,6 +4,7 @@
 #include <gtest/gtest.h>
 
 #include <cmath>
+#include <ostream>
 
 #include "softsill/metrics/bootstrap.hpp"
 #include "tests/reference/r_script.hpp"
@@ -53,6 +54,8 @@ double weighted_log_variance(const std::vector<double>& x, const std::vector<dou
   return std::log(squares / n);
 }
 
+std::ostream& operator<<(std::ostream& out, const Case& c) { return out << c.name; }
+
 class BootCi : public testing::TestWithParam<Case> {};
 
 TEST_P(BootCi, GivesTheSameIntervals) {
@@ -90,9 +93,8 @@ TEST_P(BootCi, GivesTheSameIntervals) {
         "say('acceleration', sum(L^3) / (6 * sum(L^2)^1.5))\n"
         "var.t <- apply(drawn, 2, function(i) jackvar(d[i, , drop = FALSE]))\n"
         "ok <- is.finite(var.t) & var.t > 0\n"
-        "b$t <- matrix(t[ok]); b$R <- sum(ok)\n"
-        "ci <- boot.ci(b, type = 'stud', t0 = t0, t = t[ok], var.t0 = jackvar(d), var.t = "
-        "var.t[ok])\n"
+        "b$t <- cbind(t, var.t)[ok, ]; b$t0 <- c(t0, jackvar(d)); b$R <- sum(ok)\n"
+        "ci <- boot.ci(b, type = 'stud')\n"
         "say('studentised', ci$student[4:5])\n");
   const WeightedStatistic statistic = [&](Weights w, Weights) { return GetParam().ours(x, y, w); };
   BootstrapOptions options;

@@ -31,8 +31,12 @@ PairTable table_of(int quantity, const TrialSet& cell, const TrialSet& model) {
   if (quantity == 2) {
     return covariance_table(rate_table(cell, psth), rate_table(model, psth));
   }
-  return pair_table(quantity == 0 ? PairMeasure::coincidence : PairMeasure::victor_purpura, cell,
-                    model);
+  // Pairs between cell and model are all that is asked for.
+  const std::size_t n = cell.size(), m = model.size();
+  return {PairMatrix{n, n, std::vector<double>(n * n, 0.0)},
+          pair_matrix(quantity == 0 ? PairMeasure::coincidence : PairMeasure::victor_purpura, cell,
+                      model),
+          PairMatrix{m, m, std::vector<double>(m * m, 0.0)}};
 }
 
 // Truth: 600 trials of each, whose error is far below the width of an interval from 20.
@@ -67,6 +71,7 @@ TEST(Coverage, OfTheDefaultIntervals) {
       }
       const double share = static_cast<double>(held) / rounds;
       std::printf("%s, %zu trials: %.1f %%\n", names[quantity], trials, 100.0 * share);
+      std::fflush(stdout);
       if (!coverage_warning(trials, IntervalMethod::bca)) {
         EXPECT_GE(share, 0.92) << names[quantity] << ", " << trials << " trials";
       }
