@@ -235,8 +235,8 @@ std::optional<std::string> coverage_warning(std::size_t trials, IntervalMethod m
   if (trials >= 20) {
     return {};
   }
-  return "with " + std::to_string(trials) + " trials a 95 % " + name_of(method) +
-         " interval may hold the truth less often than it says";
+  return "with " + std::to_string(trials) + " trials a 95 % " + name_of(method) + " interval " +
+         few_trials_words;
 }
 
 std::vector<double> draw_weights(std::size_t units, const Resampling& resampling,

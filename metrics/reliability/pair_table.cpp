@@ -1,5 +1,6 @@
 #include <cmath>
 #include <limits>
+#include <string>
 #include <utility>
 
 #include "softsill/error.hpp"
@@ -40,6 +41,22 @@ double sum(Weights weights) {
     total += weight;
   }
   return total;
+}
+
+// Resampling trials two ways counts the noise of single pairs about three times (Owen 2007, Ann.
+// Appl. Stat. 1:386). It rules the covariances of single trials, so their intervals are wide at
+// every number of trials tried (98 % held the truth with 5, 10 and 20: coverage_test.cpp), not
+// narrow like others from few trials.
+Bootstrap said_to_be_wide(Bootstrap result) {
+  std::erase_if(result.warnings, [](const std::string& warning) {
+    return warning.find(few_trials_words) != std::string::npos;
+  });
+  if (result.interval) {
+    result.warnings.push_back(
+        "a 95 % interval of this ratio is wider than need be: it held the truth in 98 % of "
+        "simulated cells");
+  }
+  return result;
 }
 
 std::optional<double> present(double value) {
@@ -150,21 +167,21 @@ Bootstrap bootstrap_pairs(const PairTable& table, PairStatistic statistic,
           },
           options);
     case PairStatistic::explained_variance:
-      return bootstrap_ratio(
+      return said_to_be_wide(bootstrap_ratio(
           n, m,
           [&](Weights cell, Weights model) {
             return 2.0 * cm(cell, model) - table.model_model_mean(model);
           },
-          cc, options);
+          cc, options));
     case PairStatistic::normalised_correlation:
-      return bootstrap_ratio(
+      return said_to_be_wide(bootstrap_ratio(
           n, m, cm,
           [&](Weights cell, Weights model) {
             const double signal = table.cell_cell_mean(cell);
             const double power = table.model_model_mean(model);
             return signal > 0.0 && power > 0.0 ? std::sqrt(signal * power) : undefined;
           },
-          options);
+          options));
   }
   throw InternalError("bootstrap_pairs: unknown statistic");
 }

@@ -53,7 +53,7 @@ TEST(Coverage, OfTheDefaultIntervals) {
                              : *means.cell_model;
     for (const std::size_t trials : {5u, 10u, 20u}) {
       const int rounds = 600;
-      int held = 0;
+      int held = 0, warned = 0;
       for (int round = 0; round < rounds; ++round) {
         RandomStream random(100 + trials, static_cast<std::uint64_t>(round));
         const TrialSet cell = modulated_trials(trials, length_ms, 200.0, rate_hz, random);
@@ -65,17 +65,24 @@ TEST(Coverage, OfTheDefaultIntervals) {
             table_of(quantity, cell, model),
             quantity == 2 ? PairStatistic::explained_variance : PairStatistic::cell_model, options);
         held += result.interval && result.interval->low <= truth && truth <= result.interval->high;
-        // Where coverage is not kept, the program has to say so.
-        const bool warned = coverage_warning(trials, options.method).has_value();
-        ASSERT_EQ(warned, trials < 20);
+        for (const std::string& warning : result.warnings) {
+          warned += warning.find(few_trials_words) != std::string::npos ||
+                    warning.find("wider than need be") != std::string::npos;
+        }
       }
       const double share = static_cast<double>(held) / rounds;
       std::printf("%s, %zu trials: %.1f %%\n", names[quantity], trials, 100.0 * share);
       std::fflush(stdout);
-      if (!coverage_warning(trials, IntervalMethod::bca)) {
-        EXPECT_GE(share, 0.92) << names[quantity] << ", " << trials << " trials";
+      // Where coverage is not kept, the program has to say so, every time; with 20 trials and a
+      // plain mean over pairs it keeps it and says nothing.
+      const bool kept = share >= 0.92 && share <= 0.97;
+      EXPECT_TRUE(kept || warned == rounds) << names[quantity] << ", " << trials << " trials";
+      if (trials == 20 && quantity < 2) {
+        EXPECT_TRUE(kept);
+        EXPECT_EQ(warned, 0);
       }
-      EXPECT_LE(share, 0.97) << names[quantity] << ", " << trials << " trials";
+      EXPECT_GE(share, 0.80);
+      EXPECT_LE(share, 0.995);
     }
   }
 }
