@@ -28,6 +28,10 @@ std::string sentence_for(const Estimate& estimate, const CellFit& fit) {
              " short of the maximum, more than is allowed: no numbers are given. Try more "
              "iterations, another seed or fewer time constants.";
     case FitStatus::not_converged:
+      if (fit.minimum.passed()) {
+        return "Not converged: around the end the likelihood does not fall as its derivatives say, "
+               "so some parameter runs away without bound; no numbers are given.";
+      }
       return fit.minimum.positive_definite
                  ? "Not converged: still " + gap + " below the maximum; no numbers are given."
                  : "Not converged: the likelihood is flat or curved upwards in some direction, so "
