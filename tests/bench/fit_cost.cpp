@@ -47,14 +47,16 @@ void write_rows(double seconds, double step_ms, const std::string& prefix) {
               static_cast<long>(dense.rows.cols()));
 }
 
-/// Poisson rows: every row carries the integral, rows with a spike the log hazard too. A ridge that
-/// is nothing next to the data makes the columns that no spike fell into finite, as R drops them.
+/// Poisson rows: every row carries the integral, rows with a spike the log hazard too. Right after
+/// the refractory time no spike falls, so some coefficients run to minus infinity and the maximum
+/// is only approached: R stops where its deviance no longer changes, this where the ridge holds.
+/// Columns that end within the refractory time are 0 in every row; the ridge keeps them at 0.
 struct RowsObjective : Objective {
   SpikeDesign design;
   Eigen::Index size() const override { return design.width(); }
   Evaluated evaluate(const Vector& beta, Want want) override {
     const SpikeEvaluation e = evaluate_spikes(design, Escape{}, beta, want, 2);
-    const double ridge = 1e-10;
+    const double ridge = 1e-14;  // 1e-10 would cost 0.09 nats
     Evaluated out;
     out.value = -e.log_likelihood + 0.5 * ridge * beta.squaredNorm();
     const Eigen::Index n = size();
