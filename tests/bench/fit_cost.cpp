@@ -48,7 +48,7 @@ void write_rows(double seconds, double step_ms, const std::string& prefix) {
 }
 
 /// Poisson rows: every row carries the integral, rows with a spike the log hazard too. Right after
-/// the refractory time no spike falls, so some coefficients run to minus infinity and the maximum
+/// the refractory time no spike falls, so some coefficients run off to infinity and the maximum
 /// is only approached: R stops where its deviance no longer changes, this where the ridge holds.
 /// Columns that end within the refractory time are 0 in every row; the ridge keeps them at 0.
 struct RowsObjective : Objective {
