@@ -235,7 +235,7 @@ std::optional<std::string> coverage_warning(std::size_t trials, IntervalMethod m
   if (trials >= 20) {
     return {};
   }
-  return "with " + std::to_string(trials) + " trials a 95 % " + name_of(method) + " interval " +
+  return "with " + std::to_string(trials) + " trials a " + name_of(method) + " interval " +
          few_trials_words;
 }
 

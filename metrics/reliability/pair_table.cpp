@@ -53,8 +53,8 @@ Bootstrap said_to_be_wide(Bootstrap result) {
   });
   if (result.interval) {
     result.warnings.push_back(
-        "a 95 % interval of this ratio is wider than need be: it held the truth in 98 % of "
-        "simulated cells");
+        "an interval of this ratio is wider than need be: at a level of 95 % it held the truth in "
+        "98 % of simulated cells");
   }
   return result;
 }
