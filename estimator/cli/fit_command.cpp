@@ -8,6 +8,7 @@
 #include <string>
 #include <system_error>
 
+#include "estimator/cli/arguments.hpp"
 #include "estimator/cli/command.hpp"
 #include "estimator/cli/estimate_text.hpp"
 #include "estimator/cli/terminal.hpp"
@@ -65,25 +66,6 @@ auto checked_by(Parser parser) {
     }
     return {};
   };
-}
-
-std::string at_least(const std::string& text, int least) {
-  long long value = 0;
-  const char* end = text.data() + text.size();
-  const auto read = std::from_chars(text.data(), end, value);
-  if (read.ec != std::errc{} || read.ptr != end || value < least || value > 1'000'000) {
-    return "'" + text + "' is not a whole number of at least " + std::to_string(least);
-  }
-  return {};
-}
-
-void make_directory(const std::string& path) {
-  std::error_code failure;
-  std::filesystem::create_directories(path, failure);
-  if (failure || !std::filesystem::is_directory(path)) {
-    throw Error(path, "", "cannot be made a directory",
-                failure ? failure.message() : "a file of that name is in the way");
-  }
 }
 
 /// Writes all files of a fit and says what each holds.
@@ -217,13 +199,13 @@ void add_fit(CLI::App& program, Session& session) {
       ->add_option("--starts", given->options.starts,
                    "Starting points where the likelihood may have several maxima")
       ->type_name("N")
-      ->check([](const std::string& text) { return at_least(text, 1); })
+      ->check([](const std::string& text) { return whole_number(text, 1, 1'000'000); })
       ->group("Search");
   command
       ->add_option("--max-iterations", given->options.max_iterations,
                    "Iterations of one maximisation")
       ->type_name("N")
-      ->check([](const std::string& text) { return at_least(text, 1); })
+      ->check([](const std::string& text) { return whole_number(text, 1, 1'000'000); })
       ->group("Search");
   command->add_option("--seed", given->options.seed, "Seed of the extra starting points")
       ->type_name("N")
@@ -232,7 +214,7 @@ void add_fit(CLI::App& program, Session& session) {
       ->add_option("--threads", given->options.threads,
                    "Threads, 0 for all cores; results do not depend on it")
       ->type_name("N")
-      ->check([](const std::string& text) { return at_least(text, 0); })
+      ->check([](const std::string& text) { return whole_number(text, 0, 1'000'000); })
       ->group("Search");
   command->add_option("--level", given->options.level, "Level of all intervals")
       ->type_name("SHARE")

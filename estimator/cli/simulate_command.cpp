@@ -12,6 +12,7 @@
 #include <string>
 #include <system_error>
 
+#include "estimator/cli/arguments.hpp"
 #include "estimator/cli/command.hpp"
 #include "estimator/cli/terminal.hpp"
 #include "softsill/error.hpp"
@@ -77,28 +78,9 @@ std::optional<double> value_before(const std::string& word, double first_sample)
   return word.starts_with(holding) ? number_in(word, holding.size()) : std::nullopt;
 }
 
-std::string whole_number_at_least(const std::string& text, long long least) {
-  long long value = 0;
-  const char* end = text.data() + text.size();
-  const auto read = std::from_chars(text.data(), end, value);
-  if (read.ec != std::errc{} || read.ptr != end || value < least || value > 10'000'000) {
-    return "'" + text + "' is not a whole number of at least " + std::to_string(least);
-  }
-  return {};
-}
-
 std::string positive_number(const std::string& text) {
   const std::optional<double> value = number_in(text, 0);
   return value && *value > 0.0 ? std::string() : "'" + text + "' is not a positive number";
-}
-
-void make_directory(const std::string& path) {
-  std::error_code failure;
-  std::filesystem::create_directories(path, failure);
-  if (failure || !std::filesystem::is_directory(path)) {
-    throw Error(path, "", "cannot be made a directory",
-                failure ? failure.message() : "a file of that name is in the way");
-  }
 }
 
 void append(std::string& out, double value) {
@@ -295,7 +277,7 @@ void add_simulate(CLI::App& program, Session& session) {
       ->group("Input");
   command->add_option("--trials", options.trials, "Number of trials")
       ->type_name("N")
-      ->check([](const std::string& text) { return whole_number_at_least(text, 1); })
+      ->check([](const std::string& text) { return whole_number(text, 1, 10'000'000); })
       ->group("Simulation");
   command->add_option("--seed", options.seed, "Seed of the random numbers")
       ->type_name("N")
@@ -308,7 +290,7 @@ void add_simulate(CLI::App& program, Session& session) {
       ->add_option("--threads", options.threads,
                    "Threads, 0 for all cores; results do not depend on it")
       ->type_name("N")
-      ->check([](const std::string& text) { return whole_number_at_least(text, 0); })
+      ->check([](const std::string& text) { return whole_number(text, 0, 10'000'000); })
       ->group("Simulation");
   command
       ->add_option("--runaway-hz", options.runaway_hz,
