@@ -3,7 +3,7 @@
 #include <cmath>
 #include <cstdio>
 
-#include "estimator/fit/cell_fit.hpp"
+#include "estimator/fit/fit_steps.hpp"
 #include "estimator/fit/smoothing.hpp"
 
 namespace softsill {
@@ -42,34 +42,25 @@ ByVoltage kappa_by_voltage(const CellFit& fit) {
   const VoltageStatistics& statistics = fit.likelihood->voltage();
   const auto width = static_cast<Eigen::Index>(coordinates.voltage_columns().width);
   Matrix penalty = Matrix::Zero(width, width);
-  auto first_column = [&](const KernelPart& part) {
-    return static_cast<Eigen::Index>(
-        coordinates.voltage_columns().blocks[static_cast<std::size_t>(part.voltage_block)].first);
-  };
   for (const KernelPart& part : coordinates.parts()) {
     if (part.voltage_block < 0) {
       continue;
     }
+    const Eigen::Index first = coordinates.voltage_column(part);
     const auto n = static_cast<Eigen::Index>(part.size());
     for (const Penalty& each : fit.penalised->penalties()) {
       if (each.first == part.first && each.matrix.rows() == n) {
-        penalty.block(first_column(part), first_column(part), n, n) = each.lambda * each.matrix;
+        penalty.block(first, first, n, n) = each.lambda * each.matrix;
       }
     }
-    // Columns of derivatives by time constants carry no coefficient here.
-    const ColumnBlock& block =
-        coordinates.voltage_columns().blocks[static_cast<std::size_t>(part.voltage_block)];
-    for (std::size_t j = block.functions(); j < block.width(); ++j) {
-      const auto at = static_cast<Eigen::Index>(block.first + j);
-      penalty(at, at) = 1e12 * (1.0 + statistics.total.mean(at, at));
-    }
   }
+  hold_derivative_columns(coordinates.voltage_columns(), statistics, penalty);
   const VoltageFit voltage = fit_voltage(statistics, penalty);
   const KernelPart& kappa = *coordinates.part("kappa");
   const auto n = static_cast<Eigen::Index>(kappa.size());
+  const Eigen::Index first = coordinates.voltage_column(kappa);
   const Matrix covariance = inverse_information(voltage.information, {});
-  return {voltage.v.segment(first_column(kappa), n),
-          covariance.block(first_column(kappa), first_column(kappa), n, n)};
+  return {voltage.v.segment(first, n), covariance.block(first, first, n, n)};
 }
 
 /// The same variant for spikes alone, at the joint fit's time constants and own parameters.
@@ -160,23 +151,8 @@ void check_kappa(CellFit& fit, Estimate& estimate) {
   start[0] = joint.beta[0];
   start.segment(first, n) = b * voltage.kappa;
   const Matrix information = spikes.evaluate(start, Want::derivatives_and_expected).expected;
-  std::vector<Penalty> penalties;
-  for (const KernelPart& part : spikes.coordinates().parts()) {
-    if (part.penalised()) {
-      penalties.push_back(roughness_penalty(part.name, part.first, part.size()));
-      const auto at = static_cast<Eigen::Index>(part.first);
-      const auto size = static_cast<Eigen::Index>(part.size());
-      penalties.back().lambda =
-          1e-2 * information.block(at, at, size, size).trace() / penalties.back().matrix.trace();
-    }
-  }
-  for (Penalty& penalty : penalties) {
-    for (const Penalty& from : fit.pilot_penalties) {
-      if (from.name == penalty.name && from.matrix.rows() == penalty.matrix.rows()) {
-        penalty.lambda = from.lambda;
-      }
-    }
-  }
+  std::vector<Penalty> penalties = penalties_for(spikes.coordinates(), information);
+  take_pilot_smoothing(fit.pilot_penalties, 1.0, penalties);
   Penalised penalised(spikes, penalties);
   SmoothingOptions options;
   options.minimizer = fit.minimizer_options();

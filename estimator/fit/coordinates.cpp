@@ -194,6 +194,16 @@ const KernelPart* Coordinates::part(const std::string& name) const {
   return nullptr;
 }
 
+Eigen::Index Coordinates::spike_column(const KernelPart& part) const {
+  return static_cast<Eigen::Index>(
+      spike_columns_.blocks[static_cast<std::size_t>(part.spike_block)].first);
+}
+
+Eigen::Index Coordinates::voltage_column(const KernelPart& part) const {
+  return static_cast<Eigen::Index>(
+      voltage_columns_.blocks[static_cast<std::size_t>(part.voltage_block)].first);
+}
+
 std::ptrdiff_t Coordinates::index(const std::string& name) const {
   const auto found = std::find(names_.begin(), names_.end(), name);
   return found == names_.end() ? -1 : found - names_.begin();
@@ -329,8 +339,7 @@ Mapped Coordinates::map(const Vector& theta) const {
     const auto n = static_cast<Eigen::Index>(part.size());
     const bool scaled = part.scale == KernelPart::Scale::times_b;
     const double factor = scaled ? b : part.scale == KernelPart::Scale::minus_one ? -1.0 : 1.0;
-    const auto spike_first = static_cast<Eigen::Index>(
-        spike_columns_.blocks[static_cast<std::size_t>(part.spike_block)].first);
+    const Eigen::Index spike_first = spike_column(part);
     for (Eigen::Index j = 0; j < n; ++j) {
       const auto at = static_cast<Eigen::Index>(part.first) + j;
       const double amplitude = theta[at];
@@ -349,8 +358,7 @@ Mapped Coordinates::map(const Vector& theta) const {
         m.beta_jacobian(spike_first + n + j, tau) += factor * amplitude * slope;
       }
       if (part.voltage_block >= 0) {
-        const auto first = static_cast<Eigen::Index>(
-            voltage_columns_.blocks[static_cast<std::size_t>(part.voltage_block)].first);
+        const Eigen::Index first = voltage_column(part);
         m.v[first + j] += amplitude;
         m.v_jacobian(first + j, at) += 1.0;
         if (tau >= 0) {
@@ -379,13 +387,9 @@ void Coordinates::add_curvature(const Vector& theta, const Vector& beta_weight,
     const auto n = static_cast<Eigen::Index>(part.size());
     const bool scaled = part.scale == KernelPart::Scale::times_b;
     const double factor = scaled ? b : part.scale == KernelPart::Scale::minus_one ? -1.0 : 1.0;
-    const auto spike_first = static_cast<Eigen::Index>(
-        spike_columns_.blocks[static_cast<std::size_t>(part.spike_block)].first);
-    const auto voltage_first =
-        part.voltage_block < 0
-            ? Eigen::Index{0}
-            : static_cast<Eigen::Index>(
-                  voltage_columns_.blocks[static_cast<std::size_t>(part.voltage_block)].first);
+    const Eigen::Index spike_first = spike_column(part);
+    const Eigen::Index voltage_first =
+        part.voltage_block < 0 ? Eigen::Index{0} : voltage_column(part);
     for (Eigen::Index j = 0; j < n; ++j) {
       const auto at = static_cast<Eigen::Index>(part.first) + j;
       const double amplitude = theta[at];

@@ -55,6 +55,9 @@ class Coordinates {
   const std::vector<std::string>& names() const { return names_; }
   const std::vector<KernelPart>& parts() const { return parts_; }
   const KernelPart* part(const std::string& name) const;
+  /// First of a part's columns; voltage_column only for parts that the potential carries.
+  Eigen::Index spike_column(const KernelPart& part) const;
+  Eigen::Index voltage_column(const KernelPart& part) const;
   const Columns& spike_columns() const { return spike_columns_; }
   const Columns& voltage_columns() const { return voltage_columns_; }
   /// Index of a named coordinate, -1 when not fitted.

@@ -44,6 +44,10 @@ Pilot run_pilot(const Variant& variant, const Exposure& exposure, int threads, P
 
 /// One roughness penalty per spline kernel, with smoothing parameters near the data's own scale.
 std::vector<Penalty> penalties_for(const Coordinates& coordinates, const Matrix& information);
+/// Smoothing parameters of a pilot, a better start than a guess, for kernels of the same size. The
+/// pilot's kernels are in units of Delta = 1 / b; b is 1 where `penalties` are in the same units.
+void take_pilot_smoothing(const std::vector<Penalty>& pilot, double b,
+                          std::vector<Penalty>& penalties);
 /// The pilot's smoothing parameters, or the given ones, and a weak ridge on what would separate.
 void prepare_penalties(const CellFit& fit, const Pilot& pilot, const Vector& start,
                        std::vector<Penalty>& penalties);

@@ -11,22 +11,6 @@ constexpr double pilot_cell_ms = 2.0;
 constexpr double longest_pilot_support_ms = 500.0;
 constexpr double separated_ridge = 0.04;  // prior sd of 5 units of Delta
 
-/// The pilot's smoothing is a better start than a guess. Its kappa is kappa / Delta.
-void take_pilot_smoothing(const std::vector<Penalty>& pilot, const Coordinates& coordinates,
-                          const Vector& start, std::vector<Penalty>& penalties) {
-  const double b = coordinates.joint() ? start[coordinates.index("b")] : 1.0;
-  for (Penalty& penalty : penalties) {
-    for (const Penalty& from : pilot) {
-      const bool history = from.name == "eta_minus_theta_1" && penalty.name != "kappa";
-      if (from.matrix.rows() == penalty.matrix.rows() && from.chosen &&
-          (from.name == penalty.name || history)) {
-        // Coefficients in mV are b times smaller in units of Delta.
-        penalty.lambda = from.lambda * (penalty.name == "theta_1" ? 1.0 : b * b);
-      }
-    }
-  }
-}
-
 void set_given_smoothing(const SmoothingPlan& plan, std::vector<Penalty>& penalties) {
   for (Penalty& penalty : penalties) {
     penalty.chosen = plan.automatic;
@@ -56,6 +40,20 @@ std::vector<Penalty> penalties_for(const Coordinates& coordinates, const Matrix&
   return penalties;
 }
 
+void take_pilot_smoothing(const std::vector<Penalty>& pilot, double b,
+                          std::vector<Penalty>& penalties) {
+  for (Penalty& penalty : penalties) {
+    for (const Penalty& from : pilot) {
+      const bool history = from.name == "eta_minus_theta_1" && penalty.name != "kappa";
+      if (from.matrix.rows() == penalty.matrix.rows() && from.chosen &&
+          (from.name == penalty.name || history)) {
+        // Coefficients in mV are b times smaller in units of Delta.
+        penalty.lambda = from.lambda * (penalty.name == "theta_1" ? 1.0 : b * b);
+      }
+    }
+  }
+}
+
 int bound_separated_columns(const CellObjective& objective, std::vector<Penalty>& penalties) {
   int found = 0;
   const Coordinates& coordinates = objective.coordinates();
@@ -63,8 +61,7 @@ int bound_separated_columns(const CellObjective& objective, std::vector<Penalty>
     if (part.name == "kappa" || part.penalised()) {
       continue;
     }
-    const auto first = static_cast<Eigen::Index>(
-        coordinates.spike_columns().blocks[static_cast<std::size_t>(part.spike_block)].first);
+    const Eigen::Index first = coordinates.spike_column(part);
     for (std::size_t j = 0; j < part.size(); ++j) {
       const auto column = first + static_cast<Eigen::Index>(j);
       if (objective.design().spikes.col(column).cwiseAbs().sum() > 0.0 ||
@@ -87,7 +84,8 @@ int bound_separated_columns(const CellObjective& objective, std::vector<Penalty>
 
 void prepare_penalties(const CellFit& fit, const Pilot& pilot, const Vector& start,
                        std::vector<Penalty>& penalties) {
-  take_pilot_smoothing(pilot.penalties, fit.coordinates(), start, penalties);
+  const double b = fit.joint() ? start[fit.coordinates().index("b")] : 1.0;
+  take_pilot_smoothing(pilot.penalties, b, penalties);
   set_given_smoothing(fit.variant->smoothing, penalties);
   bound_separated_columns(*fit.likelihood, penalties);
 }

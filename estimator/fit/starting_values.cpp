@@ -92,12 +92,10 @@ Vector starting_values(const Coordinates& target, const Coordinates& pilot,
     return theta;
   }
   // The potential alone gives E_0, kappa and eta.
-  const Columns& columns = target.voltage_columns();
   theta[0] = voltage->v[0];
   for (const KernelPart& part : target.parts()) {
     if (part.voltage_block >= 0) {
-      const auto first = static_cast<Eigen::Index>(
-          columns.blocks[static_cast<std::size_t>(part.voltage_block)].first);
+      const Eigen::Index first = target.voltage_column(part);
       coefficients_of(theta, part) =
           voltage->v.segment(first, static_cast<Eigen::Index>(part.size()));
     }

@@ -43,21 +43,14 @@ VoltageFit first_voltage_fit(const Coordinates& coordinates, const VoltageStatis
   for (const KernelPart& part : coordinates.parts()) {
     if (part.penalised() && part.voltage_block >= 0) {
       const Penalty rough = roughness_penalty(part.name, 0, part.size());
-      const auto first = static_cast<Eigen::Index>(
-          coordinates.voltage_columns().blocks[static_cast<std::size_t>(part.voltage_block)].first);
+      const Eigen::Index first = coordinates.voltage_column(part);
       const auto n = static_cast<Eigen::Index>(part.size());
       penalty.block(first, first, n, n) = 1e-4 *
                                           statistics.total.mean.block(first, first, n, n).trace() /
                                           rough.matrix.trace() * rough.matrix;
     }
   }
-  // Columns of derivatives have no coefficient of their own.
-  for (const ColumnBlock& block : coordinates.voltage_columns().blocks) {
-    for (std::size_t j = block.functions(); j < block.width(); ++j) {
-      const auto at = static_cast<Eigen::Index>(block.first + j);
-      penalty(at, at) = 1e12 * (1.0 + statistics.total.mean(at, at));
-    }
-  }
+  hold_derivative_columns(coordinates.voltage_columns(), statistics, penalty);
   return fit_voltage(statistics, penalty);
 }
 

@@ -313,6 +313,16 @@ Matrix block_scores(const VoltageStatistics& statistics, const Vector& v, double
   return scores;
 }
 
+void hold_derivative_columns(const Columns& columns, const VoltageStatistics& statistics,
+                             Matrix& penalty) {
+  for (const ColumnBlock& block : columns.blocks) {
+    for (std::size_t j = block.functions(); j < block.width(); ++j) {
+      const auto at = static_cast<Eigen::Index>(block.first + j);
+      penalty(at, at) = 1e12 * (1.0 + statistics.total.mean(at, at));
+    }
+  }
+}
+
 VoltageFit fit_voltage(const VoltageStatistics& statistics, const Matrix& penalty) {
   const VoltageStatistics::Block& s = statistics.total;
   const Eigen::Index p = s.mean.rows() - 1;

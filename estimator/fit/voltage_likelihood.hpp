@@ -37,7 +37,7 @@ struct VoltageStatistics {
 
 /// Which samples are read: all sweeps' analysed windows after the lead-in, every
 /// variant.voltage_step_ms, outside the masks around spikes.
-/// `block_of(sweep_index, time)` names the time block.
+/// Time blocks are block_ms long and start anew with every sweep.
 VoltageStatistics gather_voltage(const Columns& columns, const Exposure& exposure,
                                  const Recording& recording, const Variant& variant,
                                  double lead_in_ms, double block_ms, int threads);
@@ -63,6 +63,9 @@ struct VoltageFit {
   double log_sigma = 0.0, atanh_rho = 0.0;
   Matrix information;  ///< by v, with the penalty
 };
+/// Columns of derivatives by time constants have no coefficient of their own: holds them at 0.
+void hold_derivative_columns(const Columns& columns, const VoltageStatistics& statistics,
+                             Matrix& penalty);
 VoltageFit fit_voltage(const VoltageStatistics& statistics, const Matrix& penalty);
 
 }  // namespace softsill

@@ -15,12 +15,10 @@ namespace softsill::bench {
 namespace {
 
 /// Nodes as dense in number as a fit of this cell uses them: two-point cells of 2 ms.
-SpikeDesign node_design(const Recording& recording, const Variant& variant,
-                        const Exposure& exposure) {
+SpikeDesign node_design(const Variant& variant, const Exposure& exposure) {
   const Coordinates coordinates(variant, true, false);
   const NodePlan plan{&exposure, place_nodes(graded_cells(exposure, 2.0, CellRule::two_point)),
                       1000.0};
-  (void)recording;
   return make_design(coordinates.spike_columns(), plan, 2);
 }
 
@@ -29,7 +27,7 @@ void evaluation(benchmark::State& state) {
   const Variant variant = three_kernels(true);
   const Exposure exposure = make_exposure(
       recording, variant.refractory, Coordinates(variant, true, false).support_ms(), FitOptions{});
-  const SpikeDesign design = node_design(recording, variant, exposure);
+  const SpikeDesign design = node_design(variant, exposure);
   Vector beta = Vector::Zero(design.width());
   beta[0] = -5.0;
   for (auto _ : state) {
