@@ -41,8 +41,12 @@ void check_window(const Window& window) {
 
 void check_train(Train train, const Window& window, const std::string& name) {
   for (std::size_t i = 0; i < train.size(); ++i) {
-    const std::string place = name + ", spike " + std::to_string(i + 1);
     const double time = train[i];
+    const bool in_order = i == 0 || time > train[i - 1];
+    if (in_order && time >= window.begin_ms && time < window.end_ms && std::isfinite(time)) {
+      continue;  // words are made only for what is wrong: every measure comes through here
+    }
+    const std::string place = name + ", spike " + std::to_string(i + 1);
     if (!std::isfinite(time)) {
       throw Error("", place, "the time is not a finite number");
     }
