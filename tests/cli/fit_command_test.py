@@ -6,11 +6,10 @@ import os
 import pty
 import signal
 import subprocess
-import tempfile
 import time
 import unittest
 
-from program import DEMO, PROGRAM, run
+from program import DEMO, EXPONENTIALS, PROGRAM, ScratchTest, run
 
 SHEET = """cell = "short"
 [[sweep]]
@@ -21,34 +20,8 @@ start_ms = 0
 end_ms = {end}
 """
 
-EXPONENTIALS = """name = "exponentials"
-[kappa]
-family = "exponentials"
-time_constants_ms = [15]
-fit_time_constants = false
-[eta]
-family = "exponentials"
-time_constants_ms = [10, 100]
-fit_time_constants = false
-[theta_1]
-family = "absent"
-"""
 
-
-class FitCommand(unittest.TestCase):
-    def setUp(self):
-        self.scratch = tempfile.TemporaryDirectory()
-        self.addCleanup(self.scratch.cleanup)
-        self.out = self.path("out")
-
-    def path(self, *names):
-        return os.path.join(self.scratch.name, *names)
-
-    def write(self, name, text):
-        with open(self.path(name), "w", encoding="utf-8") as file:
-            file.write(text)
-        return self.path(name)
-
+class FitCommand(ScratchTest):
     def sheet(self, cell, end):
         """A sheet that names a demo recording but analyses only its start."""
         folder = os.path.join(DEMO, cell)

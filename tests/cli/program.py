@@ -3,6 +3,8 @@
 import os
 import re
 import subprocess
+import tempfile
+import unittest
 
 PROGRAM = os.environ["SOFTSILL"]
 SOURCE_DIR = os.environ["SOFTSILL_SOURCE_DIR"]
@@ -26,3 +28,35 @@ def command_names():
         if match and not in_options:
             names.append(match.group(1))
     return names
+
+
+# A variant whose estimate has integrate-and-fire equations.
+EXPONENTIALS = """name = "exponentials"
+[kappa]
+family = "exponentials"
+time_constants_ms = [15]
+fit_time_constants = false
+[eta]
+family = "exponentials"
+time_constants_ms = [10, 100]
+fit_time_constants = false
+[theta_1]
+family = "absent"
+"""
+
+
+class ScratchTest(unittest.TestCase):
+    """A test with a folder of its own; self.out in it is for results and does not exist yet."""
+
+    def setUp(self):
+        self.scratch = tempfile.TemporaryDirectory()
+        self.addCleanup(self.scratch.cleanup)
+        self.out = self.path("out")
+
+    def path(self, *names):
+        return os.path.join(self.scratch.name, *names)
+
+    def write(self, name, text):
+        with open(self.path(name), "w", encoding="utf-8") as file:
+            file.write(text)
+        return self.path(name)

@@ -5,10 +5,9 @@ import hashlib
 import json
 import math
 import os
-import tempfile
 import unittest
 
-from program import DEMO, run
+from program import DEMO, EXPONENTIALS, ScratchTest, run
 
 # 50 Hz and a dead time of 4 ms: rate 1 / (1 / 50 Hz + 4 ms) = 41.6667 Hz, CV 1 / 1.2.
 DEAD_TIME = """threshold_mV = 0
@@ -32,34 +31,8 @@ amplitudes = [-12, -2]
 time_constants_ms = [20, 150]
 """
 
-EXPONENTIALS = """name = "exponentials"
-[kappa]
-family = "exponentials"
-time_constants_ms = [15]
-fit_time_constants = false
-[eta]
-family = "exponentials"
-time_constants_ms = [10, 100]
-fit_time_constants = false
-[theta_1]
-family = "absent"
-"""
 
-
-class SimulateCommand(unittest.TestCase):
-    def setUp(self):
-        self.scratch = tempfile.TemporaryDirectory()
-        self.addCleanup(self.scratch.cleanup)
-        self.out = self.path("out")
-
-    def path(self, *names):
-        return os.path.join(self.scratch.name, *names)
-
-    def write(self, name, text):
-        with open(self.path(name), "w", encoding="utf-8") as file:
-            file.write(text)
-        return self.path(name)
-
+class SimulateCommand(ScratchTest):
     def current(self, samples, value=0.1, column="current_nA"):
         lines = ["time_ms," + column]
         lines += ["%.1f,%g" % (0.1 * i, value) for i in range(samples)]

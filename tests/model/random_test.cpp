@@ -11,6 +11,7 @@
 
 #include "softsill/error.hpp"
 #include "softsill/random.hpp"
+#include "tests/model/kolmogorov.hpp"
 
 namespace softsill {
 namespace {
@@ -71,24 +72,6 @@ TEST(RandomStream, SeedsAndStreamsDiffer) {
   }
   EXPECT_EQ(seen.size(), 25u * 100u);
 }
-
-/// Largest distance between the empirical law and `law`, times sqrt(n).
-template <typename Law>
-double kolmogorov(std::vector<double> sample, Law law) {
-  std::sort(sample.begin(), sample.end());
-  const double n = static_cast<double>(sample.size());
-  double distance = 0.0;
-  for (std::size_t i = 0; i < sample.size(); ++i) {
-    const double p = law(sample[i]);
-    distance = std::max(
-        {distance, (static_cast<double>(i) + 1.0) / n - p, p - static_cast<double>(i) / n});
-  }
-  return distance * std::sqrt(n);
-}
-
-// sqrt(n) D passes 1.95 with probability 2 exp(-2 * 1.95^2) = 1e-3 under the right law
-// (Kolmogorov 1933); with fixed seeds the outcome is fixed too.
-constexpr double kolmogorov_limit = 1.95;
 
 class Laws : public ::testing::TestWithParam<std::uint64_t> {};
 

@@ -10,23 +10,10 @@
 
 #include "softsill/random.hpp"
 #include "softsill/simulation.hpp"
+#include "tests/model/kolmogorov.hpp"
 
 namespace softsill {
 namespace {
-
-/// sqrt(n) times the Kolmogorov distance.
-template <typename Law>
-double kolmogorov(std::vector<double> sample, Law law) {
-  std::sort(sample.begin(), sample.end());
-  const double n = static_cast<double>(sample.size());
-  double distance = 0.0;
-  for (std::size_t i = 0; i < sample.size(); ++i) {
-    const double p = law(sample[i]), place = static_cast<double>(i);
-    distance = std::max({distance, (place + 1.0) / n - p, p - place / n});
-  }
-  return distance * std::sqrt(n);
-}
-constexpr double kolmogorov_limit = 1.95;  // passed with probability 1e-3 under the right law
 
 /// x(t) and the hazard for a given past, term by term.
 class Plain {
